@@ -1,0 +1,11 @@
+"""Array types used in signatures."""
+
+from typing import TypeAlias
+
+import numpy as np
+import numpy.typing as npt
+
+FloatArray: TypeAlias = npt.NDArray[np.float64]
+IntArray: TypeAlias = npt.NDArray[np.int64]
+BoolArray: TypeAlias = npt.NDArray[np.bool_]
+RngLike: TypeAlias = int | np.random.Generator | np.random.SeedSequence | np.random.BitGenerator | None

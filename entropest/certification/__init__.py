@@ -1,0 +1,1 @@
+"""Bounds that a referee can re-check."""

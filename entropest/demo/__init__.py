@@ -1,0 +1,1 @@
+"""An invented record, and the script that made it."""

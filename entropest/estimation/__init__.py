@@ -1,0 +1,1 @@
+"""Estimates of entropies and divergences with intervals."""

@@ -1,0 +1,1 @@
+"""What a laboratory hands over, turned into counts."""
