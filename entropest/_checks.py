@@ -33,7 +33,7 @@ def as_real(value: float, name: str) -> float:
     """Return `value` as a finite float."""
     try:
         number = float(value)
-    except (TypeError, ValueError) as error:
+    except (TypeError, ValueError, OverflowError) as error:
         raise ArgumentTypeError(f"{name} must be a real number, got {value!r}") from error
     if not math.isfinite(number):
         raise ArgumentValueError(f"{name} must be finite, got {number}")

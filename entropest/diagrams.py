@@ -147,9 +147,7 @@ class YoungDiagram:
         ((4, 2, 1), (1,))
         """
         columns = self.conjugate.rows
-        return tuple(
-            tuple(row - j + columns[j] - i - 1 for j in range(row)) for i, row in enumerate(self.rows)
-        )
+        return tuple(tuple(row - j + columns[j] - i - 1 for j in range(row)) for i, row in enumerate(self.rows))
 
     @property
     def standard_tableaux(self) -> int:
@@ -171,9 +169,7 @@ class YoungDiagram:
         False
         """
         if self.size != other.size:
-            raise ArgumentValueError(
-                f"dominance compares diagrams of one size, got sizes {self.size} and {other.size}"
-            )
+            raise ArgumentValueError(f"dominance compares diagrams of one size, got sizes {self.size} and {other.size}")
         difference = 0
         for i, row in enumerate(self.rows):
             difference += row - (other.rows[i] if i < len(other.rows) else 0)
@@ -190,9 +186,7 @@ class YoungDiagram:
         ['3+1', '2+2', '2+1+1']
         """
         rows = (*self.rows, 0)
-        limit = (
-            len(rows) if max_rows is None else min(len(rows), as_integer(max_rows, "max_rows", at_least=0))
-        )
+        limit = len(rows) if max_rows is None else min(len(rows), as_integer(max_rows, "max_rows", at_least=0))
         return tuple(
             YoungDiagram((*rows[:i], rows[i] + 1, *rows[i + 1 :]))
             for i in range(limit)

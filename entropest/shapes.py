@@ -27,9 +27,7 @@ __all__ = [
 LARGEST_ROW = 2**53
 
 
-def as_shapes(
-    rows: npt.ArrayLike | YoungDiagram, *, dim: int | None = None, name: str = "shapes"
-) -> IntArray:
+def as_shapes(rows: npt.ArrayLike | YoungDiagram, *, dim: int | None = None, name: str = "shapes") -> IntArray:
     """Return rows as a checked (..., dim) int64 array.
 
     Parameters

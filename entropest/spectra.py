@@ -46,10 +46,8 @@ def as_spectrum(values: npt.ArrayLike, *, tol: float = 1e-9, normalize: bool = F
     >>> as_spectrum([0.25, 0.5, 0.25])
     array([0.5 , 0.25, 0.25])
     """
-    try:
-        array = np.asarray(values, dtype=np.float64)
-    except (TypeError, ValueError) as error:
-        raise ArgumentTypeError(f"a spectrum must be a sequence of real numbers, got {values!r}") from error
+    tol = _as_tolerance(tol)
+    array = _real_numbers(values, "a spectrum")
     if array.ndim != 1 or array.size == 0:
         raise ArgumentValueError(f"a spectrum must be one-dimensional and not empty, got shape {array.shape}")
     if not np.isfinite(array).all():
@@ -87,9 +85,10 @@ def spectrum_of_state(state: npt.ArrayLike, *, tol: float = 1e-9, normalize: boo
     >>> spectrum_of_state([[0.5, 0.5], [0.5, 0.5]]).round(12)
     array([1., 0.])
     """
+    tol = _as_tolerance(tol)
     try:
         matrix = np.asarray(state, dtype=np.complex128)
-    except (TypeError, ValueError) as error:
+    except (TypeError, ValueError, OverflowError) as error:
         raise ArgumentTypeError("a state must be a square matrix of complex numbers") from error
     if matrix.ndim != 2 or matrix.shape[0] != matrix.shape[1] or matrix.size == 0:
         raise ArgumentValueError(f"a state must be a square matrix, got shape {matrix.shape}")
@@ -207,11 +206,14 @@ def thermal(energies: npt.ArrayLike, beta: float) -> FloatArray:
     >>> thermal([0.0, 1.0], 2.0).round(6)
     array([0.880797, 0.119203])
     """
-    levels = np.asarray(energies, dtype=np.float64)
+    levels = _real_numbers(energies, "energies")
     if levels.ndim != 1 or levels.size == 0 or not np.isfinite(levels).all():
         raise ArgumentValueError("energies must be a non-empty one-dimensional array of finite numbers")
-    exponents = -as_real(beta, "beta") * levels
-    return np.sort(_normalised(np.exp(exponents - exponents.max())))[::-1].copy()
+    beta = as_real(beta, "beta")
+    ground = levels.min() if beta >= 0.0 else levels.max()
+    with np.errstate(over="ignore"):
+        weights = np.exp(-beta * (levels - ground))
+    return np.sort(_normalised(weights))[::-1].copy()
 
 
 def free_fermion_occupations(sites: int) -> FloatArray:
@@ -254,6 +256,24 @@ def free_fermion_half_chain(sites: int) -> FloatArray:
     for occupation in free_fermion_occupations(sites):
         spectrum = np.multiply.outer([occupation, 1.0 - occupation], spectrum).reshape(-1)
     return np.sort(_normalised(spectrum))[::-1].copy()
+
+
+def _real_numbers(values: npt.ArrayLike, name: str) -> FloatArray:
+    """Return real numbers as float64; text and complex numbers are refused, not converted."""
+    try:
+        array = np.asarray(values)
+        if array.dtype.kind not in "iufO":
+            raise TypeError(f"dtype {array.dtype}")
+        return np.asarray(array, dtype=np.float64)
+    except (TypeError, ValueError, OverflowError) as error:
+        raise ArgumentTypeError(f"{name} must be a sequence of real numbers, got {values!r}") from error
+
+
+def _as_tolerance(tol: float) -> float:
+    number = as_real(tol, "tol")
+    if number < 0.0:
+        raise ArgumentValueError(f"tol must not be negative, got {number}")
+    return number
 
 
 def _in_unit_interval(value: float, name: str) -> float:

@@ -1,1 +1,1 @@
-"""An invented record, and the script that made it."""
+"""An invented record, the script that made it, and a walk through the main job."""

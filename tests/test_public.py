@@ -1,0 +1,66 @@
+"""The public interface: names, typing marker, what an import costs in modules."""
+
+import subprocess
+import sys
+from importlib import resources
+
+import entropest
+
+
+def test_public_names():
+    assert sorted(entropest.__all__) == [
+        "Certificate",
+        "ChiSquare",
+        "DiagramCounts",
+        "Estimate",
+        "MinEntropy",
+        "PowerSum",
+        "RelativeEntropy",
+        "Renyi",
+        "SchurWeyl",
+        "TraceDistance",
+        "Tsallis",
+        "TwoCopyShots",
+        "Varentropy",
+        "VonNeumann",
+        "YoungDiagram",
+        "__version__",
+        "as_spectrum",
+        "certify",
+        "cycle_character",
+        "estimate",
+        "free_fermion_half_chain",
+        "geometric",
+        "low_rank",
+        "maximally_mixed",
+        "power_law",
+        "random_reduced",
+        "read_record",
+        "recheck",
+        "schur_polynomial",
+        "spectrum_of_state",
+        "spiked",
+        "thermal",
+        "write_record",
+        "young_diagrams",
+    ]
+    assert all(hasattr(entropest, name) for name in entropest.__all__)
+
+
+def test_every_public_name_has_a_docstring():
+    undocumented = [name for name in entropest.__all__ if not getattr(entropest, name).__doc__]
+    assert undocumented == []
+
+
+def test_package_is_marked_as_typed():
+    assert resources.files("entropest").joinpath("py.typed").is_file()
+
+
+def test_import_stays_light():
+    """Slow or optional packages are imported only by what needs them."""
+    code = "import entropest, sys; print(*sorted(sys.modules))"
+    loaded = set(
+        subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True).stdout.split()
+    )
+    heavy = {"matplotlib", "pandas", "dask", "scipy.optimize", "scipy.stats", "scipy.integrate", "mpmath"}
+    assert not heavy & loaded
