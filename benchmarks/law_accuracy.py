@@ -9,7 +9,7 @@ from fractions import Fraction
 import numpy as np
 
 from entropest import SchurWeyl
-from entropest.law.high_precision import log_schur_ratio
+from entropest.law.high_precision import log_schur_ratios
 
 KINDS = ("separated", "tied", "gap 1e-3", "gap 1e-8", "gap 1e-15", "tiny", "zeros")
 
@@ -40,7 +40,7 @@ def exact_logpmf(p: np.ndarray, rows: np.ndarray) -> float:
     parts = [row + d - 1 - i for i, row in enumerate(kept)]
     log_f = ctx.loggamma(sum(kept) + 1) - sum(ctx.loggamma(part + 1) for part in parts)
     log_f += sum(ctx.log(parts[i] - parts[j]) for i in range(d) for j in range(i + 1, d))
-    ratio, _ = log_schur_ratio(values, kept, 40)
+    (ratio,), _ = log_schur_ratios(values, [kept], 40)
     leading = sum(row * (ctx.log(x.numerator) - ctx.log(x.denominator)) for row, x in zip(kept, values, strict=True))
     return float(log_f + leading + ctx.mpf(ratio))
 

@@ -1,13 +1,13 @@
 """What the letters of a random tableau cost beyond its rows: one term for each pair of neighbouring rows.
 
-Rows lambda_1 >= lambda_2 >= ... are the contents of a tableau only at best. For the law of tableaux of shape lambda
-with letters of probabilities p_1 >= p_2 >= ..., y_i = -log p_i and a_i = lambda_i - lambda_{i+1},
+For the law of tableaux of shape lambda with letters of probabilities p_1 >= p_2 >= ..., y_i = -log p_i and
+a_i = lambda_i - lambda_{i+1},
 
-    E[content . y] >= lambda . y + sum_i X_{a_i}(y_{i+1} - y_i),    X_a(z) = b(z) - b((a + 1) z),   b(z) = z / (e^z - 1).
+    E[content . y] >= lambda . y + sum_i X_{a_i}(y_{i+1} - y_i),   X_a(z) = b(z) - b((a + 1) z),   b(z) = z / (e^z - 1).
 
-Two lines lie above-concave below each X_a: for any kink z0 > 0, X_a(z) >= min(X_a(z0) z / z0, X_a(z0) + b'(z0) (z - z0)).
-With the lower of two lines chosen for each pair the rows separate again, and the minimum over all choices is a
-minimum along a chain. Derived in docs/theory-large-diagrams.md, "Gap terms".
+For any kink z0 > 0, X_a(z) >= min(X_a(z0) z / z0, X_a(z0) + b'(z0) (z - z0)), the lower of two lines. With one line
+chosen for each pair the rows separate again, and the minimum over all choices is a minimum along a chain. Derived in
+docs/theory-large-diagrams.md, "Gap terms".
 """
 
 import math
@@ -44,7 +44,9 @@ def gap_lines(rows: FloatArray, kinks: FloatArray) -> GapLines:
     return GapLines(slopes=np.stack([rising, falling]), offsets=np.stack([np.zeros_like(offset), offset]))
 
 
-def chain_minimum(m: Multipliers, rows: FloatArray, size: int, lines: GapLines, beyond: FloatArray, cap: float) -> float:
+def chain_minimum(
+    m: Multipliers, rows: FloatArray, size: int, lines: GapLines, beyond: FloatArray, cap: float
+) -> float:
     """Return a lower bound of the sum of all rows with their gap terms.
 
     The rows from some place on may all lie beyond the cap, where row i gives `beyond[i]` and gap terms are dropped;

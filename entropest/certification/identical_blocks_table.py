@@ -1,8 +1,8 @@
 """The table of the identical-blocks e-value: statistics and certified suprema, read on first use.
 
-The entropies tested form cells; inside a cell the statistics stay the same, so their suprema rise with the entropy. For every
-block size, cell, design (the number of copies a statistic is made for) and reference family there is one statistic of
-:mod:`.mean_polynomial`, and for every entropy of the cell a number not below its supremum.
+The entropies tested form cells; inside a cell the statistics stay the same, so their suprema rise with the entropy. For
+every block size, cell, design (the number of copies a statistic is made for) and reference family there is one
+statistic of :mod:`.mean_polynomial`, and for every entropy of the cell a number not below its supremum.
 """
 
 import hashlib

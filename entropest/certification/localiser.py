@@ -1,14 +1,15 @@
 """How far the rows of large diagrams can be from the spectrum in a known dimension, and what follows from it.
 
-Q(lambda) = dim_lambda^2 / binom(n + d^2 - 1, n), with the dimensions of the irreducible representations of GL(d), is a
-law on diagrams (Cauchy's identity), so by Markov's inequality P(lambda) >= delta Q(lambda) with probability at least
-1 - delta, whatever the spectrum. With P = f_lambda s_lambda(p) and s_lambda(p) <= dim_lambda prod p_i^lambda_i this bounds the relative entropy
+With dim_lambda the dimension of the irreducible representation of GL(d), Q(lambda) = dim_lambda^2 / C(n + d^2 - 1, n)
+is a law on diagrams (Cauchy's identity), so by Markov's inequality P(lambda) >= delta Q(lambda) with probability at
+least 1 - delta, whatever the spectrum. With P = f_lambda s_lambda(p) and s_lambda(p) <= dim_lambda prod p_i^lambda_i
+this bounds the relative entropy from h = lambda / n to the spectrum,
 
-    n D(h || p) <= log(1/delta) + log binom(n + d^2 - 1, n) + log(f_lambda / dim_lambda) - n S(h),    h = lambda / n,
+    n D(h || p) <= log(1/delta) + log C(n + d^2 - 1, n) + log(f_lambda / dim_lambda) - n S(h),
 
-where f_lambda / dim_lambda = n! / prod over boxes (d + column - row). Ratios p_j / p_i that are bounded away from 1 give
-a smaller bound of s_lambda(p), hence a smaller radius, and so on. Several diagrams: Q is the product of their laws.
-Derived in docs/theory-large-diagrams.md, "Localiser".
+where f_lambda / dim_lambda = n! / prod over boxes (d + column - row). It bounds the ratios p_j / p_i; where these stay
+away from 1, s_lambda(p) is smaller than assumed, hence the radius is smaller, and so on. Several diagrams: Q is the
+product of their laws. Derived in docs/theory-large-diagrams.md, "Localiser".
 """
 
 import math
@@ -18,7 +19,7 @@ from typing import Final
 import numpy as np
 from scipy.special import entr, gammaln, xlogy
 
-from entropest._types import FloatArray
+from entropest._types import BoolArray, FloatArray
 
 __all__ = ["Localisation", "localise"]
 
@@ -45,8 +46,8 @@ class Localisation:
 
 def localise(diagrams: FloatArray, delta: float) -> Localisation:
     """Bound the relative entropy from the rows to the spectrum, for diagrams (m, d) in dimension d."""
-    blocks, d = diagrams.shape
-    total = diagrams.sum()
+    d = diagrams.shape[1]
+    total = float(diagrams.sum())
     h = diagrams.sum(axis=0) / total
     first = _first_radius(diagrams, delta)
     excess = d * (d - 1) / 2.0
@@ -93,10 +94,10 @@ def _largest_ratios(h: FloatArray, radius: float) -> FloatArray:
     mass = h[first] + h[second]
     share = h[second] / np.where(mass > 0.0, mass, 1.0)
 
-    def beyond(r: FloatArray) -> FloatArray:
+    def beyond(r: FloatArray) -> BoolArray:
         safe = np.clip(r, 1e-300, 0.5)
         kl = xlogy(share, share / safe) + xlogy(1.0 - share, (1.0 - share) / (1.0 - safe))
-        return np.asarray(mass * kl - 1e-13 > radius)
+        return np.asarray(mass * kl - 1e-13 > radius, dtype=np.bool_)
 
     low, high = share, np.full_like(share, 0.5)
     open_ended = ~beyond(high)
@@ -115,7 +116,7 @@ def _log_multiplicity_bound(log_dims: list[FloatArray], ratios: FloatArray) -> f
     Inside a run of neighbouring letters the dimension of the run counts, between letters of two runs 1/(1 - p_j/p_i).
     """
     d = len(ratios)
-    inside = sum(log_dims)
+    inside = np.sum(log_dims, axis=0)
     with np.errstate(divide="ignore"):
         between = -len(log_dims) * np.log1p(-np.triu(ratios, 1))
     best = [0.0]

@@ -61,7 +61,7 @@ class Corrected:
     """The plug-in estimate minus its first-order bias, evaluated at the plug-in spectrum.
 
     For the entropy of one block the bias is -(1/n) [(d - 1)/2 + sum_{i<j} p_j log(p_i/p_j)/(p_i - p_j)], every tie
-    counting 1. Source: derived in docs/theory.md from the mean shift of the rows (Its, Tracy, Widom,
+    counting 1. Source: derived in docs/theory-estimation.md from the mean shift of the rows (Its, Tracy, Widom,
     arXiv:math/9909169, for the first row); it is the counterpart of Miller's correction (1955). Cost: about 2 d
     gradients of the functional. Regime: n times the smallest eigenvalue at least 3, separated
     eigenvalues; smooth functionals only.
@@ -93,9 +93,9 @@ class Continuation:
     """Power sums continued to real order, averaged over blocks; at order 1 their slope is the entropy.
 
     One row more than was seen is counted, N = min(rows + 1, d), in the share of one block; the other shares
-    count the rows seen in the record. Source: derived in docs/theory.md from Frobenius' formula for the character
-    of one cycle. Cost: O(N^2) per distinct shape. Regime: single blocks from n of the order of d on, many blocks
-    that are large; its bias is exponentially small in n times the smallest eigenvalue, ties included.
+    count the rows seen in the record. Source: derived in docs/theory-estimation.md from Frobenius' formula for the
+    character of one cycle. Cost: O(N^2) per distinct shape. Regime: single blocks from n of the order of d on, many
+    blocks that are large; its bias is exponentially small in n times the smallest eigenvalue, ties included.
 
     Parameters
     ----------

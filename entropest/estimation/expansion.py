@@ -60,7 +60,7 @@ def expand(functional: Functional, spectrum: FloatArray) -> Expansion:
     References
     ----------
     Its, Tracy, Widom, MSRI Publ. 40 (2001) 245, arXiv:math/9909169 (mean shift of the first row); the other
-    rows and the expansion are derived in docs/theory.md.
+    rows and the expansion are derived in docs/theory-estimation.md.
 
     Examples
     --------

@@ -14,13 +14,13 @@ from entropest.estimation.large_dimensions import upper_end_from_moments
 from entropest.estimation.quantiles import UNSEEN_COPIES, copies_scale, inflated_quantile
 from entropest.functionals import Functional, Varentropy, VonNeumann
 
-__all__ = ["LargeBlockInterval", "continuation_interval", "tilted_changes"]
+__all__ = ["CALIBRATED_DIMENSION", "LargeBlockInterval", "continuation_interval", "tilted_changes"]
 
 _WIDEST_FULL_DIMENSION = 256
 _BLOCKS_FOR_SPREAD = 10
 _UNSEEN_COPIES_LARGE = 5.0
 _STEP = 1e-6
-_CALIBRATED_DIMENSION = 16
+CALIBRATED_DIMENSION = 16
 _EXTRA_BELOW_ORDER_ONE = 1.1
 _EXTRA_VARENTROPY = 1.2
 
@@ -63,7 +63,8 @@ def continuation_interval(
     third central moment of the gradient (kappa' for negative mu3; not used for the entropy).
 
     Above 16 dimensions fewer rows than d may hide many levels: the upper end of the entropy is then at least
-    min(F_d + z s, the one of :func:`upper_end_from_moments`).
+    min(F_d + z s, the one of :func:`upper_end_from_moments`), and entropies of orders below 1 have no upper end
+    while n < d^2.
 
     Parameters
     ----------
@@ -78,8 +79,8 @@ def continuation_interval(
 
     References
     ----------
-    Johnson, J. Am. Stat. Assoc. 73 (1978) 536 (skewness); the rest is derived in
-    docs/theory.md and was calibrated by simulation and exact enumeration at 95% for single diagrams of n >= 20.
+    Johnson, J. Am. Stat. Assoc. 73 (1978) 536 (skewness). The rest is described in docs/theory-estimation.md and was
+    calibrated by simulation and exact enumeration at 95% for single diagrams of n >= 20.
     """
     formula = continued(functional)
     n = blocks.copies
@@ -108,6 +109,8 @@ def continuation_interval(
         upper = max(upper, _with_unseen(formula, own, blocks, UNSEEN_COPIES * copies))
         if isinstance(functional, VonNeumann) and _may_hide_levels(blocks):
             upper = max(upper, min(max(full, seen) + z * error, upper_end_from_moments(blocks, z)))
+        elif getattr(functional, "order", 1.0) < 1.0 and _may_hide_levels(blocks) and n < (blocks.dim or 0) ** 2:
+            upper = math.inf
     lower = min(seen, estimate) + min(-z * error, tilt.lower)
     if not isinstance(functional, VonNeumann):
         lower += min(skew, 0.0)
@@ -120,7 +123,7 @@ def continuation_interval(
 
 def _may_hide_levels(blocks: Blocks) -> bool:
     """Say whether the known dimension is so large that rows not seen may stand for many levels."""
-    return blocks.dim is not None and blocks.dim > _CALIBRATED_DIMENSION
+    return blocks.dim is not None and blocks.dim > CALIBRATED_DIMENSION
 
 
 def tilted_changes(functional: Functional, spectrum: FloatArray, copies: int, z: float) -> Range:

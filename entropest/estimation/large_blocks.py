@@ -9,7 +9,7 @@ from entropest.estimation.blocks import Blocks, as_blocks
 from entropest.estimation.continuation import has_continuation
 from entropest.estimation.estimators import ESTIMATORS
 from entropest.estimation.identified import Range
-from entropest.estimation.intervals import LargeBlockInterval, continuation_interval
+from entropest.estimation.intervals import CALIBRATED_DIMENSION, LargeBlockInterval, continuation_interval
 from entropest.estimation.moment_range import entropy_range_from_moments
 from entropest.estimation.order_values import (
     OfOneOrder,
@@ -48,7 +48,8 @@ def from_large_blocks(functional: Functional, record: DiagramCounts, *, method: 
     core = VonNeumann() if isinstance(functional, Renyi | Tsallis) and functional.order == 1.0 else functional
     by_power_sums = has_continuation(core) and getattr(core, "order", 1.0) <= int(blocks.sizes.min())
     notes = []
-    if method == "auto":
+    automatic = method == "auto"
+    if automatic:
         method = "continuation" if by_power_sums else "plug-in"
         if not by_power_sums:
             notes.append(f"no correction of the {functional.name} is offered: the value is rows over copies")
@@ -66,16 +67,29 @@ def from_large_blocks(functional: Functional, record: DiagramCounts, *, method: 
     interval = inside(found.interval, possible)
     if method == "continuation":
         value = capped(value, interval, notes)
+    identified = _identified(core, blocks)
     if math.isinf(value):
         notes.append("the estimate of the power sum is not positive: no value")
+    if not identified:
+        notes.append(f"blocks of fewer copies than dimensions do not fix the {functional.name}, however many they are")
+    has_value = math.isfinite(value) and (identified or not automatic)
     return Answer(
-        value=None if math.isinf(value) else value,
+        value=value if has_value else None,
         interval=interval,
-        standard_error=found.standard_error if math.isfinite(value) else None,
+        standard_error=found.standard_error if has_value else None,
         method=method,
-        identified=True,
+        identified=identified,
         notes=tuple(notes),
     )
+
+
+def _identified(functional: Functional, blocks: Blocks) -> bool:
+    """Say whether the law of one block fixes the functional: all of it, or its power sum of integer order."""
+    largest = int(blocks.sizes.max())
+    if blocks.dim is None or largest >= blocks.dim:
+        return True
+    order = getattr(functional, "order", 0.5)
+    return float(order).is_integer() and order <= largest
 
 
 def _interval_by_power_sums(
@@ -154,6 +168,11 @@ def _power_sum_notes(
         notes.append(f"the interval was not studied for fewer than {_STUDIED_FROM} copies")
     if not isinstance(core, VonNeumann):
         notes.append(f"for the {functional.name} the interval was checked in some cells only (d to 8, order to 5)")
+    elif blocks.dim is not None and blocks.dim > blocks.rows and blocks.dim > CALIBRATED_DIMENSION:
+        notes.append(
+            f"more than {CALIBRATED_DIMENSION} dimensions: rows not seen may hide many levels, so the upper end "
+            "rests on the power sums of the diagrams as well"
+        )
     if confidence != 0.95:
         notes.append("the interval was calibrated at 95%; at this confidence it was checked in two dimensions only")
     return notes

@@ -20,10 +20,10 @@ def upper_end_from_moments(blocks: Blocks, z: float) -> float:
     """Return the least of several upper bounds on the entropy, each some standard errors above its estimate.
 
     The bounds are the one of Harremoes and Topsoe from the purity and those of the ladders of polynomial bounds of
-    order k from 3 to 6, as far as n >= 6 k^2. All are linear in the unbiased power sums of the diagrams, or monotone in
-    the purity, and their standard errors are exact delete-one jackknives. They hold however many levels hide behind rows not seen. The
-    multiple of the standard error is 1.2 (1 + d/(2 n)) z: power sums of few copies are skew, and nearly flat spectra
-    of 17 to 128 levels at n = 20 and n = d needed as much in simulations.
+    order k from 3 to 6, as far as n >= 6 k^2. All are linear in the unbiased power sums of the diagrams, or monotone
+    in the purity, and their standard errors are exact delete-one jackknives. They hold however many levels hide
+    behind rows not seen. The multiple of the standard error is 1.2 (1 + d/(2 n)) z: power sums of few copies are
+    skew, and nearly flat spectra of 17 to 128 levels at n = 20 and n = d needed as much in simulations.
 
     Parameters
     ----------

@@ -36,10 +36,10 @@ class Route:
 def route(counts: DiagramCounts) -> Route:
     """Decide by block sizes alone.
 
-    Blocks of k copies are large if k >= max(20, 4 d). Fewer than 30 blocks of one size are too few for their
-    power sums to say much: then max(8, d) copies are enough. Without `dim`, the largest number of rows seen stands
-    for d in the first rule and 20 copies are needed in the second. The large blocks are used if they hold at least
-    half of all copies; otherwise the whole record goes through its power sums.
+    Blocks of k copies are large if k >= max(20, 4 d). Fewer than 30 blocks of one size are too few for their power
+    sums to say much: then max(8, d) copies are enough, and 20 in any dimension. Without `dim`, the largest number of
+    rows seen stands for d in the first rule and 20 copies are needed in the second. The large blocks are used if
+    they hold at least half of all copies; otherwise the whole record goes through its power sums.
 
     Examples
     --------
@@ -53,7 +53,7 @@ def route(counts: DiagramCounts) -> Route:
     dim = counts.dim
     levels = shapes.shape[1] if dim is None else dim
     needed = max(LARGE, 4 * levels)
-    few_needed = LARGE if dim is None else max(SMALL_BUT_FEW, dim)
+    few_needed = LARGE if dim is None else min(LARGE, max(SMALL_BUT_FEW, dim))
     block_sizes = counts.block_sizes
     blocks_of_size = np.array([block_sizes[int(size)] for size in sizes])
     large = (sizes >= needed) | ((blocks_of_size < FEW_BLOCKS) & (sizes >= few_needed))

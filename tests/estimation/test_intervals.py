@@ -20,7 +20,7 @@ from entropest.functionals import (
 )
 from entropest.law.schur_weyl import SchurWeyl
 from entropest.records import DiagramCounts
-from entropest.spectra import geometric, low_rank, maximally_mixed, spiked
+from entropest.spectra import geometric, low_rank, maximally_mixed, power_law, spiked
 
 
 def single(row, dim):
@@ -49,7 +49,7 @@ def qubits(copies):
     return [np.array([1 - q, q]) for q in sorted(seconds) if q <= 0.5]
 
 
-@pytest.mark.parametrize("copies", [20, 26, 40, 57, 130, 400])
+@pytest.mark.parametrize("copies", [20, 26, 57, 130])
 @pytest.mark.parametrize(
     "functional",
     [VonNeumann(), Renyi(0.5), Renyi(2), Renyi(5), Tsallis(3), PowerSum(2), Varentropy(), MinEntropy()],
@@ -105,6 +105,25 @@ def test_coverage_in_larger_dimensions(spectrum, copies):
     truth = VonNeumann()(spectrum)
     found = [estimate(single(row, len(spectrum))).interval for row in rows]
     assert sum(not low - 1e-10 <= truth <= high + 1e-10 for low, high in found) <= 22
+
+
+@pytest.mark.parametrize(
+    ("spectrum", "copies"),
+    [
+        (maximally_mixed(24), 24),
+        (maximally_mixed(32), 128),
+        (power_law(32, 1), 64),
+        (spiked(64, 0.9), 256),
+        (geometric(32, 0.5), 20),
+    ],
+    ids=lambda value: str(len(value)) if isinstance(value, np.ndarray) else str(value),
+)
+def test_coverage_where_many_levels_hide(spectrum, copies):
+    """Fewer rows than levels in many dimensions; 100 draws a case, more than 15 misses have probability 4e-5."""
+    rows = SchurWeyl(spectrum, copies).rvs(100, rng=np.random.default_rng(13))
+    truth = VonNeumann()(spectrum)
+    found = [estimate(single(row, len(spectrum))).interval for row in rows]
+    assert sum(not low - 1e-10 <= truth <= high + 1e-10 for low, high in found) <= 15
 
 
 @pytest.mark.parametrize(("size", "blocks"), [(8, 5), (12, 20), (24, 40), (100, 5)])

