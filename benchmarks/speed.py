@@ -1,4 +1,4 @@
-"""Speed of the law and of the samplers: one table on stdout, JSON with ``--json FILE``.
+"""Speed of the law, of the samplers and of estimates: one table on stdout, JSON with ``--json FILE``.
 
 Run ``python benchmarks/speed.py`` (about five minutes; ``--quick`` leaves out the largest cases). Every figure is a
 ratio of medians of interleaved repeats in one process, single-threaded, or says that it is a plain time.
@@ -20,8 +20,10 @@ import numpy as np
 import entropest
 from entropest import SchurWeyl, geometric, maximally_mixed
 from entropest._mp import context
+from entropest.estimation import estimate, estimate_many
 from entropest.law.determinantal import draw_determinantal
 from entropest.law.insertion import draw_by_insertion
+from entropest.records import DiagramCounts
 
 Row = dict[str, object]
 
@@ -144,6 +146,17 @@ def single_shapes(rows: list[Row]) -> None:
     rows.append({"case": "logpmf d=8 n=1e6 with ties, one shape: seconds", "value": round(spent, 5)})
 
 
+def estimates(rows: list[Row]) -> None:
+    """One estimate with its interval, and thousands of diagrams at once; plain times."""
+    for d, copies in ((8, 60), (8, 1000), (8, 10_000), (32, 1000)):
+        shapes = SchurWeyl(geometric(d, 0.7), copies).rvs(2000, rng=np.random.default_rng(5))
+        record = DiagramCounts.from_rows(shapes[:1], dim=d)
+        spent = median_time(lambda record=record: estimate(record), 15)
+        rows.append({"case": f"estimate with interval d={d} n={copies}: milliseconds", "value": round(1e3 * spent, 2)})
+        spent = median_time(lambda shapes=shapes, d=d: estimate_many(shapes, dim=d), 3) / len(shapes)
+        rows.append({"case": f"estimate_many d={d} n={copies}: milliseconds each", "value": round(1e3 * spent, 4)})
+
+
 def row(case: str, against: str, spent: float, reference: float) -> Row:
     """Return one line of the table."""
     return {"case": case, "against": against, "seconds": round(spent, 5), "ratio": float(f"{spent / reference:.3g}")}
@@ -157,6 +170,7 @@ def main() -> None:
     options = parser.parse_args()
     rows: list[Row] = []
     single_shapes(rows)
+    estimates(rows)
     tables(rows, options.quick)
     insertion(rows, options.quick)
     determinantal(rows, options.quick)

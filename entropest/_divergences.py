@@ -15,7 +15,7 @@ from entropest._types import FloatArray
 from entropest.errors import ArgumentValueError
 from entropest.spectra import as_spectrum
 
-__all__ = ["ChiSquare", "RelativeEntropy", "TraceDistance"]
+__all__ = ["ChiSquare", "Fidelity", "HilbertSchmidtDistance", "RelativeEntropy", "TraceDistance"]
 
 
 class _Divergence(Functional):
@@ -41,13 +41,21 @@ class _Divergence(Functional):
 
     def _value(self, p: FloatArray) -> FloatArray:
         ordered, q, _ = self._paired(p)
-        return np.asarray(self._terms(ordered, q).sum(axis=-1))
+        return self._of_total(np.asarray(self._terms(ordered, q).sum(axis=-1)))
 
     def _gradient(self, p: FloatArray) -> FloatArray:
         ordered, q, order = self._paired(p)
         gradient = np.empty_like(p)
         np.put_along_axis(gradient, order, self._slopes(ordered, q), axis=-1)
-        return gradient
+        return gradient * self._slope_of_total(np.asarray(self._terms(ordered, q).sum(axis=-1)))[..., None]
+
+    def _of_total(self, total: FloatArray) -> FloatArray:
+        """Return the functional of the sum of all terms: the sum itself, unless a subclass says otherwise."""
+        return total
+
+    def _slope_of_total(self, total: FloatArray) -> FloatArray:
+        """Return the derivative of :meth:`_of_total`."""
+        return np.ones_like(total)
 
     @abstractmethod
     def _terms(self, p: FloatArray, q: FloatArray) -> FloatArray:
@@ -175,3 +183,94 @@ class TraceDistance(_Divergence):
 
     def _slopes(self, p: FloatArray, q: FloatArray) -> FloatArray:
         return np.asarray(np.sign(p - q) / 2.0)
+
+
+@dataclass(frozen=True, slots=True)
+class HilbertSchmidtDistance(_Divergence):
+    """The Hilbert-Schmidt distance sqrt(sum (p - q)^2) to a reference spectrum q.
+
+    Both spectra are put in decreasing order and compared entry by entry, which gives the least distance of states
+    with these spectra. Where p = q the slope is taken as 0.
+
+    Parameters
+    ----------
+    reference : sequence of float
+        A spectrum (sums to 1); kept in decreasing order.
+
+    References
+    ----------
+    Hoffman, Wielandt, Duke Math. J. 20 (1953) 37, doi:10.1215/S0012-7094-53-02004-3.
+
+    Examples
+    --------
+    >>> round(HilbertSchmidtDistance([0.5, 0.5])([0.25, 0.75]), 6)
+    0.353553
+    """
+
+    reference: Sequence[float] | FloatArray
+
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "reference", _as_reference(self.reference))
+
+    @property
+    def name(self) -> str:
+        """Name of the functional, as printed."""
+        return "Hilbert-Schmidt distance"
+
+    def _terms(self, p: FloatArray, q: FloatArray) -> FloatArray:
+        return np.asarray((p - q) ** 2)
+
+    def _slopes(self, p: FloatArray, q: FloatArray) -> FloatArray:
+        return np.asarray(2.0 * (p - q))
+
+    def _of_total(self, total: FloatArray) -> FloatArray:
+        return np.asarray(np.sqrt(total))
+
+    def _slope_of_total(self, total: FloatArray) -> FloatArray:
+        return np.where(total > 0.0, 0.5 / np.sqrt(np.where(total > 0.0, total, 1.0)), 0.0)
+
+
+@dataclass(frozen=True, slots=True)
+class Fidelity(_Divergence):
+    """The fidelity (sum sqrt(p q))^2 with a reference spectrum q.
+
+    Both spectra are put in decreasing order and compared entry by entry, which gives the largest fidelity
+    (Tr |sqrt(rho) sqrt(sigma)|)^2 of states with these spectra.
+
+    Parameters
+    ----------
+    reference : sequence of float
+        A spectrum (sums to 1); kept in decreasing order.
+
+    References
+    ----------
+    Markham, Miszczak, Puchala, Zyczkowski, Phys. Rev. A 77 (2008) 042111, doi:10.1103/PhysRevA.77.042111.
+
+    Examples
+    --------
+    >>> round(Fidelity([0.5, 0.5])([1.0, 0.0]), 12)
+    0.5
+    """
+
+    reference: Sequence[float] | FloatArray
+
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "reference", _as_reference(self.reference))
+
+    @property
+    def name(self) -> str:
+        """Name of the functional, as printed."""
+        return "fidelity"
+
+    def _terms(self, p: FloatArray, q: FloatArray) -> FloatArray:
+        return np.asarray(np.sqrt(p * q))
+
+    def _slopes(self, p: FloatArray, q: FloatArray) -> FloatArray:
+        with np.errstate(divide="ignore", invalid="ignore"):
+            return np.where(q > 0.0, 0.5 * np.sqrt(q / p), 0.0)
+
+    def _of_total(self, total: FloatArray) -> FloatArray:
+        return total**2
+
+    def _slope_of_total(self, total: FloatArray) -> FloatArray:
+        return 2.0 * total

@@ -7,6 +7,7 @@ Results go to stdout (text, or JSON with ``--json``), messages to stderr. Exit c
 import argparse
 import json
 import os
+import re
 import sys
 from collections.abc import Callable, Sequence
 from pathlib import Path
@@ -17,11 +18,12 @@ from entropest._version import __version__
 from entropest.certification.certificate import Certificate
 from entropest.certification.certify import certify
 from entropest.certification.recheck import recheck
-from entropest.errors import ArgumentValueError, EntropestError
+from entropest.errors import ArgumentValueError, EntropestError, NotCoveredError
 from entropest.estimation.estimate import estimate
 from entropest.functionals import Functional, MinEntropy, PowerSum, Renyi, Tsallis, Varentropy, VonNeumann
 from entropest.records.counts import DiagramCounts
 from entropest.records.files import read_record
+from entropest.records.moment_counts import MomentCounts
 from entropest.records.two_copy import TwoCopyShots
 
 __all__ = ["main"]
@@ -117,7 +119,11 @@ def _parser() -> argparse.ArgumentParser:
     certifies.add_argument("--at-least", type=float, metavar="X", help="claim: the value is at least X")
     certifies.add_argument("--at-most", type=float, metavar="X", help="claim: the value is at most X")
     certifies.add_argument("--anytime", action="store_true", help="the record may have been stopped by looking at it")
+    certifies.add_argument(
+        "--planned-blocks", metavar="PLAN", help="with --anytime: blocks expected beforehand, 2000 or 2:500,4:1500"
+    )
     certifies.add_argument("--drifting", action="store_true", help="the state may differ from block to block")
+    certifies.add_argument("--trusted-dim", action="store_true", help="believe the dimension of the record")
     certifies.add_argument("--output", "-o", metavar="FILE", help="also save the certificate as JSON")
 
     rechecks = command(
@@ -154,6 +160,8 @@ def _inspect(options: argparse.Namespace) -> int:
     facts: dict[str, Any]
     if isinstance(record, TwoCopyShots):
         facts = {"kind": "two-copy shots", "shots": record.shots, "rejected": record.rejected, "sites": record.sites}
+    elif isinstance(record, MomentCounts):
+        facts = {"kind": "moments", "tests": record.tests, "copies": record.copies, "dim": record.dim}
     else:
         facts = {
             "kind": "diagrams",
@@ -170,7 +178,7 @@ def _inspect(options: argparse.Namespace) -> int:
 
 def _estimate(options: argparse.Namespace) -> int:
     result = estimate(
-        _diagrams(options),
+        _tallies(options),
         _functional(options.functional, options.base),
         method=options.method,
         confidence=options.confidence,
@@ -187,7 +195,9 @@ def _certify(options: argparse.Namespace) -> int:
         at_most=options.at_most,
         confidence=options.confidence,
         anytime=options.anytime,
+        planned_blocks=_plan(options.planned_blocks),
         drifting=options.drifting,
+        trusted_dim=options.trusted_dim,
     )
     if options.output is not None:
         replace_file(options.output, [certificate.to_json().encode() + b"\n"])
@@ -210,8 +220,8 @@ def _demo(options: argparse.Namespace) -> int:
     return DONE
 
 
-def _diagrams(options: argparse.Namespace) -> DiagramCounts:
-    """Read the record as diagrams, a region of it when it is a two-copy record."""
+def _tallies(options: argparse.Namespace) -> DiagramCounts | MomentCounts:
+    """Read the record, a region of it when it is a two-copy record."""
     record = read_record(options.record, dim=None if options.region else options.dim)
     if options.region:
         return _region(record, options.region)
@@ -222,9 +232,19 @@ def _diagrams(options: argparse.Namespace) -> DiagramCounts:
     return record
 
 
-def _region(record: DiagramCounts | TwoCopyShots, text: str) -> DiagramCounts:
+def _diagrams(options: argparse.Namespace) -> DiagramCounts:
+    """Read the record as diagrams; tests of order 2 are swap outcomes, other moments cannot be certified."""
+    record = _tallies(options)
+    if isinstance(record, MomentCounts):
+        if record.orders != (2,):
+            raise NotCoveredError(f"a certificate needs diagrams or swap outcomes, got tests of orders {record.orders}")
+        return record.swaps()
+    return record
+
+
+def _region(record: DiagramCounts | MomentCounts | TwoCopyShots, text: str) -> DiagramCounts:
     if not isinstance(record, TwoCopyShots):
-        raise ArgumentValueError("--region needs a record of two-copy shots, got diagrams")
+        raise ArgumentValueError(f"--region needs a record of two-copy shots, got {type(record).__name__}")
     sites: list[int] = []
     for part in text.split(","):
         first, _, last = part.partition("-")
@@ -234,6 +254,17 @@ def _region(record: DiagramCounts | TwoCopyShots, text: str) -> DiagramCounts:
             raise ArgumentValueError(f"--region must name sites below {record.sites}, got {part}")
         sites.extend(range(int(first), int(last or first) + 1))
     return record.region(sites)
+
+
+def _plan(text: str | None) -> int | dict[int, int] | None:
+    """Read "2000", or sizes and numbers such as "2:500,4:1500"."""
+    if text is None:
+        return None
+    if not re.fullmatch(r"\d{1,18}|\d{1,18}:\d{1,18}(,\d{1,18}:\d{1,18})*", text, flags=re.ASCII):
+        raise ArgumentValueError(f"--planned-blocks must be a number or such as 2:500,4:1500, got {text!r}")
+    if ":" not in text:
+        return int(text)
+    return {int(size): int(number) for size, number in (part.split(":") for part in text.split(","))}
 
 
 def _functional(text: str, base: float | None) -> Functional:

@@ -5,13 +5,15 @@ spectrum; nothing is normalised or clipped, and zeros are exact: 0 log 0 = 0. En
 is given, at construction or in the call. Divergences put both spectra in decreasing order.
 """
 
-from entropest._divergences import ChiSquare, RelativeEntropy, TraceDistance
+from entropest._divergences import ChiSquare, Fidelity, HilbertSchmidtDistance, RelativeEntropy, TraceDistance
 from entropest._entropies import MinEntropy, PowerSum, Renyi, Tsallis, Varentropy, VonNeumann
 from entropest._functional import Functional
 
 __all__ = [
     "ChiSquare",
+    "Fidelity",
     "Functional",
+    "HilbertSchmidtDistance",
     "MinEntropy",
     "PowerSum",
     "RelativeEntropy",

@@ -21,6 +21,7 @@ __all__ = [
     "dominates",
     "down_probabilities",
     "log_standard_tableaux",
+    "rows_of",
     "shifted_rows",
 ]
 
@@ -78,7 +79,14 @@ def as_shapes(rows: npt.ArrayLike | YoungDiagram, *, dim: int | None = None, nam
 
 
 def rows_of(diagrams: Iterable[YoungDiagram], dim: int) -> IntArray:
-    """Return diagrams as one (K, dim) array."""
+    """Return diagrams as one (K, dim) array.
+
+    Examples
+    --------
+    >>> rows_of([YoungDiagram((3, 1)), YoungDiagram((2, 2))], 3)
+    array([[3, 1, 0],
+           [2, 2, 0]])
+    """
     rows = [diagram.rows + (0,) * (dim - len(diagram.rows)) for diagram in diagrams]
     return np.array(rows, dtype=np.int64).reshape(len(rows), dim)
 

@@ -68,6 +68,18 @@ def test_claim_that_is_not_certified_has_exit_code_3(capsys, pairs):
     assert "NOT met" in out
 
 
+def test_certify_takes_a_plan_and_a_trusted_dimension(capsys, pairs, tmp_path):
+    options = ["--anytime", "--planned-blocks", "2:900", "--json"]
+    code, out, _ = run(capsys, "certify", pairs, *options)
+    assert code == 0
+    assert json.loads(out)["tests"][0]["planned"] == {"2": 900}
+    large = tmp_path / "large.csv"
+    large.write_text("# dim: 3\ndiagram\n600+300+100\n")
+    code, out, _ = run(capsys, "certify", str(large), "--trusted-dim", "--at-most", "1.0")
+    assert code == 0
+    assert "dimension 3" in out
+
+
 def test_recheck_of_another_record_fails(capsys, pairs, tmp_path):
     saved, other = str(tmp_path / "certificate.json"), tmp_path / "other.csv"
     other.write_text(PAIRS.replace("700", "701"))
@@ -150,6 +162,8 @@ def test_bad_files_give_one_line_and_no_result(capsys, tmp_path, text, message):
         (["estimate", "FILE", "--region", "0"], "--region"),
         (["certify", "FILE", "--anytime", "--drifting"], "cannot both"),
         (["certify", "FILE", "--at-least", "nan"], "at_least"),
+        (["certify", "FILE", "--anytime", "--planned-blocks", "many"], "--planned-blocks"),
+        (["certify", "FILE", "--trusted-dim"], "dimension"),
         (["certify", "FILE", "--output", "/no/such/folder/c.json"], "No such file"),
         (["recheck", "FILE", "FILE"], "certificate"),
         (["inspect", "/no/such/file.csv"], "No such file"),

@@ -13,6 +13,8 @@ from entropest._mp import context
 from entropest.errors import ArgumentTypeError, ArgumentValueError
 from entropest.functionals import (
     ChiSquare,
+    Fidelity,
+    HilbertSchmidtDistance,
     MinEntropy,
     PowerSum,
     RelativeEntropy,
@@ -47,7 +49,13 @@ SYMMETRIC = [
     MinEntropy(),
     Varentropy(),
 ]
-DIVERGENCES = [RelativeEntropy(Q), ChiSquare(Q), TraceDistance((0.4, 0.26, 0.2, 0.14))]
+DIVERGENCES = [
+    RelativeEntropy(Q),
+    ChiSquare(Q),
+    TraceDistance((0.4, 0.26, 0.2, 0.14)),
+    HilbertSchmidtDistance(Q),
+    Fidelity(Q),
+]
 WITH_LOGARITHM = [VonNeumann, MinEntropy, Varentropy]
 
 weights = st.lists(st.floats(0.0, 1.0), min_size=1, max_size=6).filter(lambda x: sum(x) > 1e-3)
@@ -79,6 +87,10 @@ def plain(functional, p, ctx):
         return sum(x * ctx.log(x / q) for x, q in pairs)
     if isinstance(functional, ChiSquare):
         return sum((x - q) ** 2 / q for x, q in pairs)
+    if isinstance(functional, HilbertSchmidtDistance):
+        return ctx.sqrt(sum((x - q) ** 2 for x, q in pairs))
+    if isinstance(functional, Fidelity):
+        return sum(ctx.sqrt(x * q) for x, q in pairs) ** 2
     return sum(abs(x - q) for x, q in pairs) / 2
 
 

@@ -4,46 +4,54 @@ import subprocess
 import sys
 from importlib import resources
 
+import pytest
+
 import entropest
 
 
 def test_public_names():
-    assert sorted(entropest.__all__) == [
-        "Certificate",
-        "ChiSquare",
-        "DiagramCounts",
-        "Estimate",
-        "MinEntropy",
-        "PowerSum",
-        "RelativeEntropy",
-        "Renyi",
-        "SchurWeyl",
-        "TraceDistance",
-        "Tsallis",
-        "TwoCopyShots",
-        "Varentropy",
-        "VonNeumann",
-        "YoungDiagram",
-        "__version__",
-        "as_spectrum",
-        "certify",
-        "cycle_character",
-        "estimate",
-        "free_fermion_half_chain",
-        "geometric",
-        "low_rank",
-        "maximally_mixed",
-        "power_law",
-        "random_reduced",
-        "read_record",
-        "recheck",
-        "schur_polynomial",
-        "spectrum_of_state",
-        "spiked",
-        "thermal",
-        "write_record",
-        "young_diagrams",
-    ]
+    assert (
+        dir(entropest)
+        == sorted(entropest.__all__)
+        == [
+            "Certificate",
+            "ChiSquare",
+            "DiagramCounts",
+            "Estimate",
+            "JointSwapCounts",
+            "MinEntropy",
+            "MomentCounts",
+            "PowerSum",
+            "RelativeEntropy",
+            "Renyi",
+            "SchurWeyl",
+            "TraceDistance",
+            "Tsallis",
+            "TwoCopyShots",
+            "Varentropy",
+            "VonNeumann",
+            "YoungDiagram",
+            "__version__",
+            "as_spectrum",
+            "certify",
+            "cycle_character",
+            "estimate",
+            "free_fermion_half_chain",
+            "geometric",
+            "low_rank",
+            "maximally_mixed",
+            "power_law",
+            "random_reduced",
+            "read_record",
+            "recheck",
+            "schur_polynomial",
+            "spectrum_of_state",
+            "spiked",
+            "thermal",
+            "write_record",
+            "young_diagrams",
+        ]
+    )
     assert all(hasattr(entropest, name) for name in entropest.__all__)
 
 
@@ -56,9 +64,17 @@ def test_package_is_marked_as_typed():
     assert resources.files("entropest").joinpath("py.typed").is_file()
 
 
-def test_import_stays_light():
-    """Slow or optional packages are imported only by what needs them."""
+def test_the_import_itself_loads_nothing():
     code = "import entropest, sys; print(*sorted(sys.modules))"
+    loaded = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True).stdout.split()
+    assert "numpy" not in loaded
+    with pytest.raises(AttributeError, match="no attribute 'nothing'"):
+        entropest.nothing  # noqa: B018
+
+
+def test_import_stays_light():
+    """Slow or optional packages are imported only by what needs them, also when every public name is used."""
+    code = "from entropest import *; import sys; print(*sorted(sys.modules))"
     loaded = set(
         subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True).stdout.split()
     )

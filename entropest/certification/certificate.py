@@ -3,15 +3,17 @@
 import json
 import math
 import textwrap
-from collections.abc import Mapping
-from dataclasses import asdict, dataclass, fields
+from collections.abc import Mapping, Sequence
+from dataclasses import asdict, dataclass, field, fields
 from typing import Any, Final, Self
 
+from entropest.certification.rules import ENTROPY_CAP, TUNED_CAP
 from entropest.errors import ArgumentValueError
 
-__all__ = ["SCHEMA", "Certificate", "Claim", "Test", "WitnessSet"]
+__all__ = ["SCHEMA", "Certificate", "Claim", "Test", "WitnessSet", "contradicts", "entropy_bounds"]
 
-SCHEMA: Final = "entropest-certificate/1"
+SCHEMA: Final = "entropest-certificate/2"
+_OLDER_SCHEMA: Final = "entropest-certificate/1"
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -49,13 +51,19 @@ class Test:
     Attributes
     ----------
     kind : str
-        "symmetric-outcome", "mixture-e-value", "large-diagram" or "swap-purity".
+        Which test; see :mod:`entropest.certification.wording`.
     error : float
         Share of the error that the test may use.
     lower, upper : float or None
         What it bounds: the von Neumann entropy in nats, or the purity for "swap-purity".
     block_sizes : mapping of int to int
         The blocks it uses: size to number of blocks.
+    planned : mapping of int to int
+        The numbers of blocks that tuned its bets, empty without bets of that kind.
+    leading : int
+        The component of a tuned e-value that has most of the weight.
+    parameters : mapping of str to numbers
+        The parameters of a dual bound or the limit of an eigenvalue, from which the bound can be computed again.
     """
 
     __test__ = False
@@ -65,6 +73,9 @@ class Test:
     lower: float | None
     upper: float | None
     block_sizes: Mapping[int, int]
+    planned: Mapping[int, int] = field(default_factory=dict)
+    leading: int = 0
+    parameters: Mapping[str, float | tuple[float, ...]] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -91,6 +102,10 @@ class Certificate:
         The tests in words.
     anytime, drifting : bool
         The options the bound was computed under.
+    trusted_dim : int or None
+        The dimension that was believed, None if none was.
+    expecting : tuple of float or None
+        The spectrum that was expected, which chose where to put the weight.
     tests : tuple of Test
     witnesses : tuple of WitnessSet
         The fixed grid of the mixture e-value, for each block size it uses.
@@ -116,6 +131,8 @@ class Certificate:
     method: str
     anytime: bool
     drifting: bool
+    trusted_dim: int | None
+    expecting: tuple[float, ...] | None
     tests: tuple[Test, ...]
     witnesses: tuple[WitnessSet, ...]
     fractions: tuple[float, ...]
@@ -152,6 +169,8 @@ class Certificate:
     @classmethod
     def from_dict(cls, data: Any) -> Self:
         """Build a certificate from what :meth:`to_dict` returns."""
+        if isinstance(data, dict) and data.get("schema") == _OLDER_SCHEMA:
+            data = _from_version_1(data)
         if not isinstance(data, dict) or data.get("schema") != SCHEMA:
             found = data.get("schema") if isinstance(data, dict) else type(data).__name__
             raise ArgumentValueError(f"a certificate must have schema {SCHEMA!r}, got {found!r}")
@@ -163,6 +182,8 @@ class Certificate:
             values["witnesses"] = tuple(_read_witnesses(witness) for witness in values["witnesses"])
             for name in ("fractions", "assumptions", "notes"):
                 values[name] = tuple(values[name])
+            if values["expecting"] is not None:
+                values["expecting"] = tuple(_number(value) for value in values["expecting"])
         except (TypeError, ValueError, AttributeError) as error:
             raise ArgumentValueError(f"a certificate is damaged: {error}") from error
         _check_numbers(values)
@@ -191,6 +212,27 @@ class Certificate:
         return "\n".join(lines)
 
 
+def contradicts(tests: Sequence[Test]) -> bool:
+    """Say whether a test rejects every state, which tells of a fault and not of entropy: then nothing is certified."""
+    tops = {"tuned-e-value": TUNED_CAP}
+    return any(
+        test.upper == 0.0 if test.kind == "swap-purity" else test.lower == tops.get(test.kind, ENTROPY_CAP)
+        for test in tests
+    )
+
+
+def entropy_bounds(tests: Sequence[Test]) -> tuple[float | None, float | None]:
+    """Return what tests of the von Neumann entropy prove together, in nats."""
+    lowers = [test.lower for test in tests if test.lower is not None]
+    uppers = [test.upper for test in tests if test.upper is not None]
+    upper = min(uppers, default=None)
+    if contradicts(tests):
+        return 0.0, None
+    if not lowers and upper is None:
+        return 0.0, None
+    return max(lowers, default=None), upper
+
+
 def _down(value: float) -> str:
     """Write six decimals, rounded down."""
     return f"{math.floor(value * 1e6) / 1e6:.6f}"
@@ -201,12 +243,21 @@ def _up(value: float) -> str:
     return f"{math.ceil(value * 1e6) / 1e6:.6f}"
 
 
+def _from_version_1(data: dict[str, Any]) -> dict[str, Any]:
+    """Add the fields that version 1 lacked; its tests are no longer made, so it can be read but not checked again."""
+    tests = data.get("tests")
+    if not isinstance(tests, list) or not all(isinstance(test, dict) for test in tests):
+        raise ArgumentValueError("a certificate is damaged: tests must be a list of objects")
+    added = {"planned": {}, "leading": 0, "parameters": {}}
+    return {**data, "schema": SCHEMA, "trusted_dim": None, "expecting": None, "tests": [{**added, **t} for t in tests]}
+
+
 def _refuse_constant(name: str) -> float:
     raise ValueError(f"{name} is not allowed")
 
 
 def _check_keys(cls: type, values: Mapping[str, Any], what: str) -> None:
-    expected = {field.name for field in fields(cls)}
+    expected = {one.name for one in fields(cls)}
     if missing := expected - values.keys():
         raise ArgumentValueError(f"{what} lacks {', '.join(sorted(missing))}")
     if extra := values.keys() - expected:
@@ -217,8 +268,18 @@ def _read_test(data: Any) -> Test:
     if not isinstance(data, dict):
         raise ValueError(f"a test must be an object, got {type(data).__name__}")
     _check_keys(Test, data, "a test")
-    sizes = {int(size): int(blocks) for size, blocks in data["block_sizes"].items()}
-    return Test(**{**data, "block_sizes": sizes})
+    sizes = {name: {int(k): int(m) for k, m in data[name].items()} for name in ("block_sizes", "planned")}
+    parameters = {
+        str(name): tuple(_number(x) for x in value) if isinstance(value, list) else _number(value)
+        for name, value in data["parameters"].items()
+    }
+    return Test(**{**data, **sizes, "parameters": parameters})
+
+
+def _number(value: object) -> float:
+    if not _is_number(value):
+        raise ValueError(f"a parameter must be a number, got {value!r}")
+    return float(value)  # type: ignore[arg-type]
 
 
 def _read_witnesses(data: Any) -> WitnessSet:
@@ -236,6 +297,9 @@ def _check_numbers(values: Mapping[str, Any]) -> None:
             raise ArgumentValueError(f"{name} of a certificate must be a number or null, got {values[name]!r}")
     if not _is_number(values["confidence"]) or not 0.0 < values["confidence"] < 1.0:
         raise ArgumentValueError(f"confidence must lie strictly between 0 and 1, got {values['confidence']!r}")
+    dim = values["trusted_dim"]
+    if not (dim is None or (isinstance(dim, int) and not isinstance(dim, bool) and dim >= 1)):
+        raise ArgumentValueError(f"trusted_dim of a certificate must be a dimension or null, got {dim!r}")
     for name in ("anytime", "drifting"):
         if not isinstance(values[name], bool):
             raise ArgumentValueError(f"{name} of a certificate must be true or false, got {values[name]!r}")

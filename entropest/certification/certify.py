@@ -2,24 +2,37 @@
 
 import math
 from collections.abc import Mapping
+from dataclasses import replace
 
 import numpy as np
+import numpy.typing as npt
 
-from entropest._checks import as_confidence, as_real
+from entropest._checks import as_confidence, as_integer, as_real
 from entropest._version import __version__
-from entropest.certification.certificate import Certificate, Claim, Test, WitnessSet
-from entropest.certification.evidence import FRACTIONS, SizedBlocks, evidence_lower_bound
-from entropest.certification.large_diagram import large_diagram_lower_bound
+from entropest.certification.certificate import (
+    Certificate,
+    Claim,
+    Test,
+    WitnessSet,
+    contradicts,
+    entropy_bounds,
+)
+from entropest.certification.entropy_tests import run_entropy_test, sized_blocks
+from entropest.certification.evidence import FRACTIONS
+from entropest.certification.plan import Options, plan_entropy_tests
 from entropest.certification.purity import purity_lower_bound, purity_upper_bound
-from entropest.certification.rules import ENTROPY_CAP, error_split, large_sizes
-from entropest.certification.score_test import score_lower_bound
+from entropest.certification.rules import large_sizes
+from entropest.certification.tuned import smooth_spectrum
 from entropest.certification.witnesses import LARGEST_ORDER, ladder_chords, ladder_nodes
 from entropest.certification.wording import assumptions, describe_method
-from entropest.errors import ArgumentValueError, NotCoveredError
+from entropest.errors import ArgumentTypeError, ArgumentValueError, NotCoveredError
 from entropest.functionals import Functional, PowerSum, Renyi, VonNeumann
 from entropest.records.counts import DiagramCounts
+from entropest.spectra import as_spectrum
 
 __all__ = ["certify"]
+
+_LARGEST_EXPECTED = 4.0
 
 
 def certify(
@@ -30,15 +43,18 @@ def certify(
     at_most: float | None = None,
     confidence: float = 0.95,
     anytime: bool = False,
+    planned_blocks: int | Mapping[int, int] | None = None,
     drifting: bool = False,
+    trusted_dim: bool = False,
+    expecting: float | npt.ArrayLike | None = None,
 ) -> Certificate:
-    """Bound an entropy from below by what a record proves, without knowing the dimension.
+    """Bound an entropy by what a record proves, without knowing the dimension.
 
-    The von Neumann entropy is bounded by the larger of an exact test on the fully symmetric outcome and a mixture
-    e-value, at a split of the error that depends on the number of blocks alone; fewer than 30 blocks of at least 100
-    copies are bounded as large diagrams instead. With `anytime` or `drifting` the e-value is used alone. The Renyi
-    entropy of order 2 and the purity ``PowerSum(2)`` are bounded by exact binomial limits from the blocks of two
-    copies.
+    The von Neumann entropy is bounded from below by the larger of an exact score test on the topmost outcomes and an
+    e-value, at a split of the error that depends on the block sizes alone; few large blocks are used as large diagrams
+    instead (:func:`entropest.certification.rules.plan_entropy_tests` has the rule). With `anytime` or `drifting` an
+    e-value is used alone. The Renyi entropy of order 2 and the purity ``PowerSum(2)`` are bounded by exact binomial
+    limits from the blocks of two copies.
 
     Parameters
     ----------
@@ -52,8 +68,17 @@ def certify(
         One minus the largest probability of a false statement.
     anytime : bool
         The record may have been stopped at any time, by looking at it; blocks are identical.
+    planned_blocks : int or mapping of int to int, optional
+        With `anytime`: the number of blocks of each size expected before the data were seen. It sharpens the bound and
+        has no bearing on its validity. One number serves a record of one block size.
     drifting : bool
         The state may differ between blocks; their number was fixed beforehand, the bound is on the average.
+    trusted_dim : bool
+        Believe the dimension of the record. It sharpens lower bounds from large diagrams and gives upper bounds there.
+
+    expecting : array_like or float, optional
+        The spectrum, or the von Neumann entropy in nats, expected before the data were seen. It decides where the
+        weight is put (the division of the error, the leading witness) and has no bearing on validity.
 
     Returns
     -------
@@ -76,10 +101,23 @@ def certify(
     >>> pairs = DiagramCounts.from_swap(symmetric=2064, antisymmetric=936)
     >>> certificate = certify(pairs, at_least=0.9)
     >>> certificate.met, round(certificate.lower, 3)
-    (True, 0.961)
+    (True, 0.972)
     """
-    error = 1.0 - as_confidence(confidence)
+    if not isinstance(counts, DiagramCounts):
+        raise ArgumentTypeError(f"counts must be a DiagramCounts, got {type(counts).__name__}")
+    if not isinstance(functional, Functional):
+        raise ArgumentTypeError(f"functional must be a functional such as VonNeumann(), got {functional!r}")
     claim = _checked_claim(at_least, at_most)
+    options = Options(
+        error=1.0 - as_confidence(confidence),
+        lower=claim is None or claim.at_least is not None,
+        upper=claim is not None and claim.at_most is not None,
+        anytime=anytime,
+        drifting=drifting,
+        dim=_trusted_dim(counts) if trusted_dim else None,
+        planned_blocks=_planned(planned_blocks, counts),
+        expecting=None if expecting is None else _expected_spectrum(expecting),
+    )
     if anytime and drifting:
         raise NotCoveredError(
             "anytime and drifting cannot both be true: with drifting blocks and a stopping time chosen from the data, "
@@ -87,11 +125,11 @@ def certify(
         )
     bounds: tuple[float | None, float | None]
     if isinstance(functional, VonNeumann):
-        tests = _entropy_tests(counts, error, claim, anytime=anytime, drifting=drifting)
-        bounds = 0.0 if _contradicts(tests) else max(test.lower for test in tests if test.lower is not None), None
+        tests = _entropy_tests(counts, options, two_sided=claim is None)
+        bounds = entropy_bounds(tests)
     elif isinstance(functional, Renyi | PowerSum) and functional.order == 2:
-        tests = [_purity_test(counts, error, claim, functional, anytime=anytime, drifting=drifting)]
-        bounds = tests[0].lower, None if _contradicts(tests) else tests[0].upper
+        tests = [_purity_test(counts, options, functional, two_sided=claim is None)]
+        bounds = tests[0].lower, None if contradicts(tests) else tests[0].upper
     else:
         raise NotCoveredError(
             f"functional must be VonNeumann(), Renyi(2) or PowerSum(2) for a certificate, got {functional.name}"
@@ -110,10 +148,12 @@ def certify(
         method=describe_method(tests),
         anytime=anytime,
         drifting=drifting,
+        trusted_dim=options.dim,
+        expecting=options.expecting,
         tests=tuple(tests),
         witnesses=tuple(_witness_set(size) for size in evidence_sizes),
         fractions=FRACTIONS if evidence_sizes else (),
-        assumptions=assumptions(anytime=anytime, drifting=drifting),
+        assumptions=assumptions(anytime=anytime, drifting=drifting, trusted_dim=options.dim),
         notes=_notes(counts, tests),
         blocks=counts.blocks,
         copies=counts.copies,
@@ -132,59 +172,59 @@ def _checked_claim(at_least: float | None, at_most: float | None) -> Claim | Non
     return Claim(at_least=lower, at_most=upper)
 
 
-def _entropy_tests(
-    counts: DiagramCounts, error: float, claim: Claim | None, *, anytime: bool, drifting: bool
-) -> list[Test]:
-    """Run the tests that bound the von Neumann entropy from below; their errors add up to `error`."""
-    if claim is not None and claim.at_most is not None:
-        raise NotCoveredError(
-            "at_most cannot be certified for the von Neumann entropy: without a known dimension no finite record "
-            "excludes a small part of the state with large entropy"
+def _trusted_dim(counts: DiagramCounts) -> int:
+    if counts.dim is None:
+        raise ArgumentValueError("trusted_dim needs a record with a dimension, got dim None")
+    return counts.dim
+
+
+def _expected_spectrum(expecting: float | npt.ArrayLike) -> tuple[float, ...]:
+    """Return the expected spectrum; an entropy stands for the smooth spectrum of that entropy."""
+    if np.ndim(expecting) > 0:
+        return tuple(as_spectrum(expecting).tolist())
+    entropy = as_real(expecting, "expecting")  # type: ignore[arg-type]
+    if not 0.0 < entropy <= _LARGEST_EXPECTED:
+        raise ArgumentValueError(
+            f"expecting must be an entropy above 0 and at most {_LARGEST_EXPECTED} nat, got {entropy}"
         )
-    sizes = dict(counts.block_sizes)
-    small = {size: blocks for size, blocks in sizes.items() if size >= 2}
-    if anytime or drifting:
-        return [_evidence_test(counts, small, error, drifting=drifting)]
-    large = large_sizes(sizes)
-    small = {size: blocks for size, blocks in small.items() if size not in large}
-    tests = []
-    if large or not small:
-        tests.append(_large_test(counts, {size: sizes[size] for size in large or sizes}, error / 2 if small else error))
-    if small:
-        for_score, for_evidence = error_split(error / 2 if tests else error, sum(small.values()))
-        tests.append(_score_test(counts, small, for_score))
-        tests.append(_evidence_test(counts, small, for_evidence, drifting=False))
-    return tests
+    spectrum = smooth_spectrum(entropy)
+    return tuple(as_spectrum(spectrum[spectrum > 1e-9], normalize=True).tolist())
 
 
-def _score_test(counts: DiagramCounts, sizes: Mapping[int, int], error: float) -> Test:
-    symmetric = _symmetric_outcomes(counts, sizes)
-    lower = score_lower_bound(symmetric, sizes, error=error)
-    return Test(kind="symmetric-outcome", error=error, lower=lower, upper=None, block_sizes=sizes)
+def _planned(planned: int | Mapping[int, int] | None, counts: DiagramCounts) -> dict[int, int] | None:
+    """Return the planned number of blocks for every block size of the record."""
+    if planned is None:
+        return None
+    sizes = [size for size in counts.block_sizes if size >= 2]
+    if not isinstance(planned, Mapping):
+        if len(sizes) > 1:
+            raise ArgumentValueError(f"planned_blocks must map each block size to a number, got {planned!r}")
+        planned = dict.fromkeys(sizes, planned)
+    if missing := [size for size in sizes if size not in planned]:
+        raise ArgumentValueError(f"planned_blocks must name every block size of the record, {missing[0]} is missing")
+    return {
+        as_integer(size, "size of planned_blocks", at_least=1): as_integer(number, "planned_blocks", at_least=1)
+        for size, number in planned.items()
+    }
 
 
-def _evidence_test(counts: DiagramCounts, sizes: Mapping[int, int], error: float, *, drifting: bool) -> Test:
-    lower = evidence_lower_bound(_sized(counts, sizes), error=error, drifting=drifting) if sizes else 0.0
-    return Test(kind="mixture-e-value", error=error, lower=lower, upper=None, block_sizes=sizes)
+def _entropy_tests(counts: DiagramCounts, options: Options, *, two_sided: bool) -> list[Test]:
+    """Run the tests of the von Neumann entropy; their errors add up to the error of the certificate."""
+    diagrams = large_sizes(counts.block_sizes)
+    upper_possible = options.dim is not None and bool(diagrams) and not (options.anytime or options.drifting)
+    if options.upper and not upper_possible:
+        raise NotCoveredError(
+            "at_most needs large diagrams of a trusted dimension, and their number fixed beforehand: otherwise no "
+            "finite record excludes a small part of the state with large entropy"
+        )
+    if two_sided and upper_possible:
+        options = replace(options, upper=True)
+    return [run_entropy_test(test, counts, options) for test in plan_entropy_tests(counts.block_sizes, options)]
 
 
-def _large_test(counts: DiagramCounts, sizes: Mapping[int, int], error: float) -> Test:
-    rows = np.sum([part.counts @ part.shapes for part in _sized(counts, sizes)], axis=0)
-    lower = large_diagram_lower_bound(rows, error=error)
-    return Test(kind="large-diagram", error=error, lower=lower, upper=None, block_sizes=sizes)
-
-
-def _purity_test(
-    counts: DiagramCounts,
-    error: float,
-    claim: Claim | None,
-    functional: Renyi | PowerSum,
-    *,
-    anytime: bool,
-    drifting: bool,
-) -> Test:
+def _purity_test(counts: DiagramCounts, options: Options, functional: Renyi | PowerSum, *, two_sided: bool) -> Test:
     """Bound the purity on the sides that are asked for; both, at half the error each, without a claim."""
-    if anytime or drifting:
+    if options.anytime or options.drifting:
         raise NotCoveredError(
             f"anytime and drifting must be false for {functional.name}: "
             "its binomial limits need identical blocks and a fixed number of them"
@@ -195,31 +235,19 @@ def _purity_test(
             f"a certificate of the {functional.name} needs blocks of two copies, "
             f"got sizes {', '.join(map(str, counts.block_sizes))}"
         )
-    floor_asked = claim is None or claim.at_least is not None
-    ceiling_asked = claim is None or claim.at_most is not None
+    floor_asked, ceiling_asked = options.lower, options.upper or two_sided
     if isinstance(functional, Renyi):
         floor_asked, ceiling_asked = ceiling_asked, floor_asked
-    share = error / 2 if floor_asked and ceiling_asked else error
-    symmetric = _symmetric_outcomes(counts, {2: pairs})
+    share = options.error / 2 if floor_asked and ceiling_asked else options.error
+    (part,) = sized_blocks(counts, {2: pairs})
+    symmetric = int(part.counts[part.shapes[:, 0] == 2].sum())
     return Test(
         kind="swap-purity",
-        error=error,
+        error=options.error,
         lower=purity_lower_bound(symmetric, pairs, error=share) if floor_asked else None,
         upper=purity_upper_bound(symmetric, pairs, error=share) if ceiling_asked else None,
         block_sizes={2: pairs},
     )
-
-
-def _symmetric_outcomes(counts: DiagramCounts, sizes: Mapping[int, int]) -> int:
-    return sum(int(part.counts[part.shapes[:, 0] == part.copies].sum()) for part in _sized(counts, sizes))
-
-
-def _sized(counts: DiagramCounts, sizes: Mapping[int, int]) -> list[SizedBlocks]:
-    boxes = counts.compact_shapes.sum(axis=1)
-    return [
-        SizedBlocks(copies=size, shapes=counts.compact_shapes[boxes == size], counts=counts.counts[boxes == size])
-        for size in sorted(sizes)
-    ]
 
 
 def _in_unit(bounds: tuple[float | None, float | None], functional: Functional) -> tuple[float | None, float | None]:
@@ -240,11 +268,6 @@ def _renyi_2(purity: tuple[float | None, float | None]) -> tuple[float | None, f
     return None if largest is None else abs(math.log(largest)), -math.log(least) if least else None
 
 
-def _contradicts(tests: list[Test]) -> bool:
-    """Say whether a test rejects every state, which tells of a fault and not of entropy: then nothing is certified."""
-    return any(test.upper == 0.0 if test.kind == "swap-purity" else test.lower == ENTROPY_CAP for test in tests)
-
-
 def _witness_set(copies: int) -> WitnessSet:
     order = min(copies, LARGEST_ORDER)
     if order == 2:
@@ -258,7 +281,7 @@ def _notes(counts: DiagramCounts, tests: list[Test]) -> tuple[str, ...]:
     unused = [size for size in counts.block_sizes if size not in used]
     if unused:
         notes.append(f"blocks of {', '.join(map(str, unused))} copies are not used by these tests")
-    if _contradicts(tests):
+    if contradicts(tests):
         notes.append(
             "no state makes such outcomes likely, whatever its entropy, so nothing is certified: "
             "look for a fault in the measurement"

@@ -5,8 +5,7 @@ blocks of 1 + b (g - s), b = f / (s - floor), has mean at most 1 under the null 
 average over a fixed grid of witnesses and fractions has too. By Ville's inequality it exceeds 1/error at some time with
 probability at most `error`. Every factor is non-increasing in s: the bound is the largest s rejected.
 
-Identical blocks: any stopping time. Drifting blocks: the number of blocks must be fixed beforehand and the bound
-is on the average entropy over the blocks; all block sizes then share one b. Proofs: docs/theory.md, "E-values".
+It needs identical blocks and no plan of their number. Proofs: docs/theory.md, "E-values".
 References: Ville (1939); Waudby-Smith and Ramdas, J. R. Stat. Soc. B 86 (2024) 1, arXiv:2010.09686.
 """
 
@@ -45,7 +44,7 @@ class _Scored:
     floors: FloatArray
 
 
-def evidence_lower_bound(blocks: Sequence[SizedBlocks], *, error: float, drifting: bool = False) -> float:
+def evidence_lower_bound(blocks: Sequence[SizedBlocks], *, error: float) -> float:
     """Return the largest entropy (nat) that the mixture e-value rejects at level `error`.
 
     Parameters
@@ -54,8 +53,6 @@ def evidence_lower_bound(blocks: Sequence[SizedBlocks], *, error: float, driftin
         Blocks of at least two copies, one entry a size.
     error : float
         Probability that the bound exceeds the entropy, over identical blocks at any stopping time.
-    drifting : bool
-        Bound the plain average over the blocks instead; their number must have been fixed beforehand.
 
     Returns
     -------
@@ -68,7 +65,7 @@ def evidence_lower_bound(blocks: Sequence[SizedBlocks], *, error: float, driftin
     >>> round(evidence_lower_bound([pairs], error=0.05), 2)
     0.56
     """
-    scored = _score(blocks, drifting)
+    scored = _score(blocks)
     threshold = -math.log(error) + 1e-9 + 1e-14 * sum(float(part.counts.sum()) for part in scored)
 
     def rejected(entropy: float) -> bool:
@@ -85,7 +82,7 @@ def evidence_lower_bound(blocks: Sequence[SizedBlocks], *, error: float, driftin
     return low
 
 
-def log_mixture_e_value(blocks: Sequence[SizedBlocks], entropy: float, *, drifting: bool = False) -> float:
+def log_mixture_e_value(blocks: Sequence[SizedBlocks], entropy: float) -> float:
     """Return the logarithm of the mixture e-value against "the entropy is at most `entropy`" (nat, positive).
 
     Examples
@@ -94,27 +91,20 @@ def log_mixture_e_value(blocks: Sequence[SizedBlocks], entropy: float, *, drifti
     >>> log_mixture_e_value([pairs], 0.5) > math.log(20) > log_mixture_e_value([pairs], 0.6)
     True
     """
-    return _log_mixture(_score(blocks, drifting), entropy)
+    return _log_mixture(_score(blocks), entropy)
 
 
-def _score(blocks: Sequence[SizedBlocks], drifting: bool) -> list[_Scored]:
-    """Evaluate the ladder of every block size; under drift all sizes get the lowest floor, hence one bet."""
-    ladders = [witness_ladder(part.copies) for part in blocks]
-    lowest = np.min([ladder.floors for ladder in ladders], axis=0)
-    return [
-        _Scored(
-            values=np.concatenate(
-                [
-                    witness_values(ladder, part.shapes[start : start + _CHUNK])
-                    for start in range(0, len(part.shapes), _CHUNK)
-                ],
-                axis=1,
-            ),
-            counts=part.counts.astype(np.float64),
-            floors=lowest if drifting else ladder.floors,
-        )
-        for part, ladder in zip(blocks, ladders, strict=True)
-    ]
+def _score(blocks: Sequence[SizedBlocks]) -> list[_Scored]:
+    """Evaluate the ladder of every block size."""
+    scored = []
+    for part in blocks:
+        ladder = witness_ladder(part.copies)
+        chunks = [
+            witness_values(ladder, part.shapes[start : start + _CHUNK]) for start in range(0, len(part.shapes), _CHUNK)
+        ]
+        values = np.concatenate(chunks, axis=1)
+        scored.append(_Scored(values=values, counts=part.counts.astype(np.float64), floors=ladder.floors))
+    return scored
 
 
 def _log_mixture(scored: Sequence[_Scored], entropy: float) -> float:

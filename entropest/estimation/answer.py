@@ -17,6 +17,7 @@ class Answer:
     method: str
     identified: bool
     notes: tuple[str, ...]
+    reason: str = ""
 
 
 def capped(raw: float, possible: Range, notes: list[str], what: str = "estimate") -> float:

@@ -6,9 +6,10 @@ import numpy as np
 
 from entropest._types import FloatArray, IntArray
 from entropest.estimation.continuation import Continued
+from entropest.functionals import Functional
 from entropest.records.counts import DiagramCounts
 
-__all__ = ["Blocks", "as_blocks"]
+__all__ = ["Blocks", "as_blocks", "with_zeros"]
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -83,3 +84,11 @@ class Blocks:
 def as_blocks(counts: DiagramCounts) -> Blocks:
     """Return the blocks of a record as arrays."""
     return Blocks(shapes=counts.compact_shapes, counts=counts.counts, dim=counts.dim)
+
+
+def with_zeros(functional: Functional, spectra: FloatArray) -> FloatArray:
+    """Return spectra (..., d) with zeros added up to the length of the functional's reference, if it has one."""
+    missing = len(getattr(functional, "reference", ())) - spectra.shape[-1]
+    if missing <= 0:
+        return spectra
+    return np.concatenate([spectra, np.zeros((*spectra.shape[:-1], missing))], axis=-1)

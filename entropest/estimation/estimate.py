@@ -9,18 +9,20 @@ from entropest.estimation.continuation import has_continuation
 from entropest.estimation.estimators import ESTIMATORS
 from entropest.estimation.identified import Range
 from entropest.estimation.large_blocks import from_large_blocks
+from entropest.estimation.moment_tallies import from_tallies
 from entropest.estimation.power_sums import LARGEST_ORDER
 from entropest.estimation.result import Estimate
 from entropest.estimation.routing import Route, route
 from entropest.estimation.small_blocks import from_moments, from_power_sums
 from entropest.functionals import Functional, PowerSum, Renyi, Tsallis, VonNeumann
 from entropest.records.counts import DiagramCounts
+from entropest.records.moment_counts import MomentCounts
 
 __all__ = ["estimate"]
 
 
 def estimate(
-    counts: DiagramCounts,
+    counts: DiagramCounts | MomentCounts,
     functional: Functional = VonNeumann(),
     *,
     method: str = "auto",
@@ -31,16 +33,17 @@ def estimate(
 
     Parameters
     ----------
-    counts : DiagramCounts
-        The record.
+    counts : DiagramCounts or MomentCounts
+        The record. Cyclic-shift tests (MomentCounts) give the Renyi and Tsallis entropies and power sums of the orders
+        tested, and the range of the von Neumann entropy that these allow; only with method="auto".
     functional : Functional
         What is estimated.
     method : str
-        "auto", or a name in ``ESTIMATORS``: "plug-in", "corrected" or "continuation". With "auto":
+        "auto", or a name in ``ESTIMATORS`` such as "plug-in" or "continuation". With "auto":
 
         - large blocks (see :func:`entropest.estimation.routing.route`), if they hold at least half of the copies,
-          are used one diagram at a time: by continuation of power sums, or by plug-in for functionals that are
-          not made of power sums;
+          are used one diagram at a time: by the split posterior for the von Neumann entropy (by continuation above
+          256 dimensions), by continuation for other functionals made of power sums, by plug-in for the rest;
         - otherwise a Renyi or Tsallis entropy or power sum of integer order k comes from the unbiased Tr rho^k of
           all blocks of k copies or more;
         - otherwise the von Neumann entropy gets the range that the measured power sums allow. If the blocks are
@@ -65,13 +68,13 @@ def estimate(
     --------
     >>> found = estimate(DiagramCounts({"571+286+143": 1}, dim=3))
     >>> round(found.value, 3), round(found.interval[0], 2), round(found.interval[1], 2), found.method
-    (0.959, 0.92, 1.0, 'continuation')
+    (0.958, 0.92, 1.0, 'split posterior')
     >>> pairs = DiagramCounts.from_swap(symmetric=2100, antisymmetric=900, dim=4)
     >>> estimate(pairs).identified, round(estimate(pairs, Renyi(2), base=2).value, 2)
     (False, 1.32)
     """
-    if not isinstance(counts, DiagramCounts):
-        raise ArgumentTypeError(f"counts must be a DiagramCounts, got {type(counts).__name__}")
+    if not isinstance(counts, DiagramCounts | MomentCounts):
+        raise ArgumentTypeError(f"counts must be a DiagramCounts or MomentCounts, got {type(counts).__name__}")
     if not isinstance(functional, Functional):
         raise ArgumentTypeError(
             f"functional must be a functional such as VonNeumann(), got {type(functional).__name__}"
@@ -92,17 +95,22 @@ def estimate(
         copies=counts.copies,
         blocks=counts.blocks,
         identified=answer.identified,
+        reason=answer.reason,
         notes=answer.notes,
     )
 
 
-def _answer(functional: Functional, counts: DiagramCounts, method: str, confidence: float) -> Answer:
+def _answer(functional: Functional, counts: DiagramCounts | MomentCounts, method: str, confidence: float) -> Answer:
     """Choose the way and go it."""
     order = getattr(functional, "order", None)
     if order == 0.0:
         raise NotCoveredError(f"no record fixes the rank of a state, so there is no estimate of the {functional.name}")
     if isinstance(functional, PowerSum) and order == 1.0:
         return _sum_of_eigenvalues()
+    if isinstance(counts, MomentCounts):
+        if method != "auto":
+            raise NotCoveredError(f'method must be "auto" for cyclic-shift tests, got {method!r}')
+        return from_tallies(functional, counts, confidence=confidence)
     found = route(counts)
     if found.large is not None:
         answer = from_large_blocks(functional, found.large, method=method, confidence=confidence)
@@ -112,7 +120,7 @@ def _answer(functional: Functional, counts: DiagramCounts, method: str, confiden
         return answer
     answer = _from_small_blocks(functional, counts, found, confidence)
     if method == "auto":
-        return answer
+        return replace(answer, reason="the blocks are small and fix power sums of whole orders only")
     value = ESTIMATORS[method](functional)(counts) * functional.scale()
     note = f"the blocks are too small for the {method} value that was asked for; the interval does not rest on it"
     return replace(answer, value=value, standard_error=None, method=method, notes=(note, *answer.notes))

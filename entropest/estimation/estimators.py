@@ -5,6 +5,7 @@ construction and return its value in the unit of that functional. Each says wher
 and what it is meant for.
 """
 
+import math
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from types import MappingProxyType
@@ -13,13 +14,17 @@ from typing import Final, Protocol
 import numpy as np
 
 from entropest._types import FloatArray
-from entropest.estimation.blocks import Blocks, as_blocks
+from entropest.estimation.blocks import Blocks, as_blocks, with_zeros
 from entropest.estimation.continuation import Continued, continued
 from entropest.estimation.expansion import expand, require_smooth
+from entropest.estimation.likelihood import MaximumLikelihood
+from entropest.estimation.moment_fit import MomentFit
+from entropest.estimation.posterior_estimators import AveragedPosterior, PosteriorMean, SplitPosterior
 from entropest.functionals import Functional, VonNeumann
 from entropest.records.counts import DiagramCounts
+from entropest.shapes import down_probabilities
 
-__all__ = ["ESTIMATORS", "Continuation", "Corrected", "Estimator", "PlugIn"]
+__all__ = ["ESTIMATORS", "Continuation", "Corrected", "Estimator", "Jackknife", "PlugIn"]
 
 
 class Estimator(Protocol):
@@ -116,6 +121,44 @@ class Continuation:
         return formula.value(continued_average(formula, as_blocks(counts))) / self.functional.scale()
 
 
+@dataclass(frozen=True, slots=True)
+class Jackknife:
+    """The delete-one jackknife of the plug-in estimate: n F(rows/n) - (n - 1) times its mean with one copy less.
+
+    The mean is over all n copies and all orders of the copies, exactly: dropping a copy of a block takes its shape to
+    the shape without one box with the ratio of their numbers of standard tableaux, so nothing is resampled. Source:
+    Quenouille, Biometrika 43 (1956) 353, doi:10.1093/biomet/43.3-4.353, applied to diagrams. Cost: O(d^2) per distinct
+    shape and d evaluations of the functional. Regime: smooth functionals and n times the smallest eigenvalue at least
+    3; it removes the bias of order 1/n but not the one of order n^(-3/2) at ties, and widens the spread a little.
+
+    Parameters
+    ----------
+    functional : Functional
+        What is estimated. A record of a single copy gives the plug-in value, and an infinite plug-in value stays.
+
+    Examples
+    --------
+    >>> round(Jackknife()(DiagramCounts({"60+30+10": 1})), 6)
+    0.923966
+    """
+
+    functional: Functional = VonNeumann()
+
+    def __call__(self, counts: DiagramCounts) -> float:
+        """Return the estimate."""
+        blocks = as_blocks(counts)
+        whole = float(self.functional(plug_in_spectrum(self.functional, blocks)))
+        copies = blocks.copies
+        if copies == 1 or math.isinf(whole):
+            return whole
+        weights = blocks.average(down_probabilities(blocks.shapes))
+        kept = np.flatnonzero(weights > 0.0)
+        fewer = blocks.counts @ blocks.shapes - np.eye(blocks.rows, dtype=np.int64)[kept]
+        spectra = with_zeros(self.functional, fewer / (copies - 1.0))
+        without = float(weights[kept] @ np.asarray(self.functional(spectra)) / weights[kept].sum())
+        return copies * whole - (copies - 1.0) * without
+
+
 def continued_average(formula: Continued, blocks: Blocks) -> FloatArray:
     """Return the averaged statistics of :class:`Continuation`, (c,)."""
     seen = blocks.average(blocks.statistics(formula, blocks.rows))
@@ -128,14 +171,20 @@ def continued_average(formula: Continued, blocks: Blocks) -> FloatArray:
 
 def plug_in_spectrum(functional: Functional, blocks: Blocks) -> FloatArray:
     """Return the plug-in spectrum, with zeros added up to the length of the reference if there is one."""
-    spectrum = blocks.spectrum
-    length = len(getattr(functional, "reference", ()))
-    if length > len(spectrum):
-        spectrum = np.concatenate([spectrum, np.zeros(length - len(spectrum))])
-    return spectrum
+    return with_zeros(functional, blocks.spectrum)
 
 
 ESTIMATORS: Final[Mapping[str, Callable[[Functional], Estimator]]] = MappingProxyType(
-    {"plug-in": PlugIn, "corrected": Corrected, "continuation": Continuation}
+    {
+        "plug-in": PlugIn,
+        "corrected": Corrected,
+        "jackknife": Jackknife,
+        "continuation": Continuation,
+        "likelihood": MaximumLikelihood,
+        "moment fit": MomentFit,
+        "posterior mean": PosteriorMean,
+        "averaged posterior": AveragedPosterior,
+        "split posterior": SplitPosterior,
+    }
 )
 """Name of each method of :func:`entropest.estimation.estimate` -> maker of the estimator of a functional."""

@@ -21,8 +21,9 @@ class Expansion:
     """Second-order quantities of F(rows/n) around a spectrum, in nats.
 
     The rows of n copies have covariance n (diag p - p p^T) and mean shifts sum_{j > i} p_j/(p_i - p_j)
-    - sum_{j < i} p_i/(p_j - p_i), so F(rows/n) has bias (curvature/2 + shift)/n and variance
-    first_order/n + second_order/(2 n^2). Both hold while n times every eigenvalue is large; divided differences
+    - sum_{j < i} p_i/(p_j - p_i), so F(rows/n) has bias (curvature/2 + shift)/n. Its variance is
+    first_order/n to first order; the unbiased or continued estimate of F has first_order/n + second_order/(2 n^2). Both
+    hold while n times every eigenvalue is large; divided differences
     of the gradient keep them finite at ties.
 
     Attributes
@@ -46,7 +47,11 @@ class Expansion:
     third_moment: float
 
     def bias(self, copies: int, blocks: int = 1) -> float:
-        """Return the bias of F(added rows / copies) when the copies were measured in as many blocks."""
+        """Return the bias of F(added rows / copies) when the copies were measured in as many blocks.
+
+        With several blocks it is for separated eigenvalues: at exact ties the rows of a block are pushed apart by
+        sqrt(n), and the bias is larger (by a quarter for ten blocks of a maximally mixed qubit).
+        """
         return (0.5 * self.curvature + blocks * self.shift) / copies
 
 

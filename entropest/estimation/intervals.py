@@ -14,11 +14,18 @@ from entropest.estimation.large_dimensions import upper_end_from_moments
 from entropest.estimation.quantiles import UNSEEN_COPIES, copies_scale, inflated_quantile
 from entropest.functionals import Functional, Varentropy, VonNeumann
 
-__all__ = ["CALIBRATED_DIMENSION", "LargeBlockInterval", "continuation_interval", "tilted_changes"]
+__all__ = [
+    "CALIBRATED_DIMENSION",
+    "UNSEEN_COPIES_LARGE",
+    "WIDEST_FULL_DIMENSION",
+    "LargeBlockInterval",
+    "continuation_interval",
+    "tilted_changes",
+]
 
-_WIDEST_FULL_DIMENSION = 256
+WIDEST_FULL_DIMENSION = 256
 _BLOCKS_FOR_SPREAD = 10
-_UNSEEN_COPIES_LARGE = 5.0
+UNSEEN_COPIES_LARGE = 5.0
 _STEP = 1e-6
 CALIBRATED_DIMENSION = 16
 _EXTRA_BELOW_ORDER_ONE = 1.1
@@ -88,7 +95,7 @@ def continuation_interval(
     further = blocks.statistics(formula, blocks.rows + (blocks.unseen_levels > 0))
     one_more = blocks.average(further)
     seen, full = formula.value(own), math.inf
-    if blocks.dim is not None and blocks.dim <= _WIDEST_FULL_DIMENSION:
+    if blocks.dim is not None and blocks.dim <= WIDEST_FULL_DIMENSION:
         full = formula.value(blocks.average(blocks.statistics(formula, blocks.dim)))
     expansion = expand(functional, blocks.spectrum)
     first_order = expansion.first_order
@@ -100,7 +107,7 @@ def continuation_interval(
     z = inflated_quantile(confidence, n) * _extra_inflation(functional)
     skew = _skewness_shift(expansion, z, n)
     copies = copies_scale(confidence)
-    top = _with_unseen(formula, one_more, blocks, _UNSEEN_COPIES_LARGE * copies)
+    top = _with_unseen(formula, one_more, blocks, UNSEEN_COPIES_LARGE * copies)
     tilt = Range(lower=0.0, upper=0.0)
     if isinstance(functional, Varentropy):
         tilt = tilted_changes(functional, blocks.spectrum, n, z)

@@ -19,6 +19,7 @@ from entropest.estimation.order_values import (
     to_tsallis,
 )
 from entropest.estimation.plug_in_intervals import plug_in_interval
+from entropest.estimation.split_posterior import LARGEST_DIMENSION
 from entropest.functionals import Functional, PowerSum, Renyi, Tsallis, VonNeumann
 from entropest.records.counts import DiagramCounts
 
@@ -49,8 +50,9 @@ def from_large_blocks(functional: Functional, record: DiagramCounts, *, method: 
     by_power_sums = has_continuation(core) and getattr(core, "order", 1.0) <= int(blocks.sizes.min())
     notes = []
     automatic = method == "auto"
+    reason = ""
     if automatic:
-        method = "continuation" if by_power_sums else "plug-in"
+        method, reason = _choice(core, record.dim, by_power_sums)
         if not by_power_sums:
             notes.append(f"no correction of the {functional.name} is offered: the value is rows over copies")
     raw = ESTIMATORS[method](core)(record) * core.scale()
@@ -80,7 +82,19 @@ def from_large_blocks(functional: Functional, record: DiagramCounts, *, method: 
         method=method,
         identified=identified,
         notes=tuple(notes),
+        reason=reason,
     )
+
+
+def _choice(functional: Functional, dim: int | None, by_power_sums: bool) -> tuple[str, str]:
+    """Return the automatic method for large blocks, and why it is chosen."""
+    if isinstance(functional, VonNeumann) and (dim is None or dim <= LARGEST_DIMENSION):
+        return "split posterior", "the least error in trials over spectra, dimensions and sizes of large blocks"
+    if isinstance(functional, VonNeumann):
+        return "continuation", f"more than {LARGEST_DIMENSION} dimensions are too many for posteriors"
+    if by_power_sums:
+        return "continuation", "nearly free of bias, and made for functionals of power sums"
+    return "plug-in", "no correction is offered"
 
 
 def _identified(functional: Functional, blocks: Blocks) -> bool:
@@ -150,7 +164,8 @@ def _power_sum_notes(
     """Return what the value and the interval rest on."""
     notes = []
     if blocks.dim is None:
-        notes.append(f"the dimension is not given: one row more than the {blocks.rows} seen is counted")
+        by_posteriors = ", two more by posteriors" if isinstance(core, VonNeumann) else ""
+        notes.append(f"the dimension is not given: one row more than the {blocks.rows} seen is counted{by_posteriors}")
         if math.isinf(found.interval.upper):
             closed = replace(blocks, dim=blocks.rows)
             upper = _interval_by_power_sums(core, closed, found.bracket.lower, confidence)[0].interval.upper

@@ -6,7 +6,7 @@ from typing import TypeAlias
 import numpy as np
 
 from entropest.estimation.identified import Range
-from entropest.functionals import Functional, MinEntropy, PowerSum, Renyi, TraceDistance, Tsallis, VonNeumann
+from entropest.functionals import Fidelity, Functional, MinEntropy, PowerSum, Renyi, TraceDistance, Tsallis, VonNeumann
 
 __all__ = ["OfOneOrder", "from_tsallis", "possible_range", "slope_from_tsallis", "to_tsallis"]
 
@@ -68,7 +68,7 @@ def possible_range(functional: Functional, dim: int | None) -> Range:
     if isinstance(functional, PowerSum):
         uniform = from_tsallis(functional, _tsallis_of_uniform(functional.order, most))
         return Range(lower=min(1.0, uniform), upper=max(1.0, uniform))
-    return Range(lower=0.0, upper=1.0 if isinstance(functional, TraceDistance) else math.inf)
+    return Range(lower=0.0, upper=1.0 if isinstance(functional, TraceDistance | Fidelity) else math.inf)
 
 
 def _tsallis_of_uniform(order: float, log_dim: float) -> float:

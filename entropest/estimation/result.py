@@ -35,6 +35,8 @@ class Estimate:
         What the record holds.
     identified : bool
         Whether more blocks like these would fix the functional; if not, the interval cannot shrink to a point.
+    reason : str
+        Why the method was chosen; empty for a method that was asked for.
     notes : tuple of str
         What was capped, left out or assumed, and what the interval rests on.
     """
@@ -49,6 +51,7 @@ class Estimate:
     copies: int
     blocks: int
     identified: bool
+    reason: str = ""
     notes: tuple[str, ...] = ()
 
     def __str__(self) -> str:
@@ -61,7 +64,7 @@ class Estimate:
         lines = [
             f"{self.functional.name}: {value}",
             f"{100 * self.confidence:g}% interval: {low} to {high}{unit}",
-            f"method: {self.method} ({sizes})",
+            f"method: {self.method}{', ' * bool(self.reason)}{self.reason} ({sizes})",
         ]
         return "\n".join(lines + [f"note: {note}" for note in self.notes])
 
@@ -74,7 +77,7 @@ class Estimate:
         >>> from entropest.estimation import estimate
         >>> found = estimate(DiagramCounts({"60+40": 1}, dim=2)).to_dict()
         >>> found["schema"], found["method"], found["unit"], found["copies"]
-        ('entropest-estimate/1', 'continuation', 'nat', 100)
+        ('entropest-estimate/1', 'split posterior', 'nat', 100)
         """
         return {
             "schema": SCHEMA,
@@ -84,6 +87,7 @@ class Estimate:
             "standard_error": _finite(self.standard_error),
             "unit": self.unit,
             "method": self.method,
+            "reason": self.reason,
             "confidence": self.confidence,
             "copies": self.copies,
             "blocks": self.blocks,

@@ -7,7 +7,7 @@ For positive eigenvalues with logarithms x_1 >= ... >= x_d and l_j = row_j + d -
 has unit diagonal and entries of at most 1, and log s_lambda = sum_i x_i l_i + log det M - log prod_{i<j}
 (p_i - p_j). In a group of t equal eigenvalues starting at row c the r-th row (r = 0 .. t-1) carries the Newton
 polynomial prod_{m<r} (l_{c+m} - l_j), divided by its value on the diagonal: a group alone has a triangular
-matrix, so that the maximally mixed state loses nothing (derived in docs/theory.md).
+matrix, so that the maximally mixed state loses nothing (derived in docs/derivations.md).
 
 The number returned is log T with T = s_lambda / prod p_i^row_i >= 1.
 """

@@ -57,10 +57,16 @@ def draw_determinantal(probabilities: FloatArray, copies: int, size: int, genera
     NotCoveredError
         If a measure of numerical accuracy passes its limit, or there are too many eigenvalues or copies.
 
+    Notes
+    -----
+    Neither time nor memory grows with `copies`. A spectrum needs a set-up, kept for the last four; a draw takes about
+    d candidates (at most some 2 d) of d log d point proposals each. Memory stays below 100 MB besides
+    the result: at most 50,000 nodes, typically 450 for each group of eigenvalues, and 4096 candidates at a time.
+
     References
     ----------
     Hough, Krishnapur, Peres, Virag, Probab. Surv. 3 (2006) 206, doi:10.1214/154957806000000078, for drawing from a
-    projection ensemble. The conditioning on n and the pair of ensembles are derived in docs/theory.md.
+    projection ensemble. The conditioning on n and the pair of ensembles are derived in docs/derivations.md.
 
     Examples
     --------

@@ -10,7 +10,7 @@ permanent; hence
 
     permanent / determinant <= d! prod_groups prod_{r<t} max(1, l_1^r / r!) prod_{a<b} (v_a/(v_a-v_b))^(t_a t_b)
 
-The decimal logarithm of the right-hand side is the number of digits that can be lost (derived in docs/theory.md).
+The decimal logarithm of the right-hand side is the number of digits that can be lost (derived in docs/derivations.md).
 """
 
 from __future__ import annotations

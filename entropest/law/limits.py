@@ -68,7 +68,7 @@ def mean_shifts(spectrum: npt.ArrayLike) -> FloatArray:
     References
     ----------
     Its, Tracy, Widom, MSRI Publications 40 (2001), arXiv:math/9909169, for the first row; the others are derived in
-    docs/theory.md.
+    docs/derivations.md.
 
     Examples
     --------
@@ -233,7 +233,7 @@ def plug_in_bias(spectrum: npt.ArrayLike, copies: int) -> float:
 
     References
     ----------
-    Derived in docs/theory.md; the term (r - 1)/2 is Miller's (in Information Theory in Psychology, 1955).
+    Derived in docs/derivations.md; the term (r - 1)/2 is Miller's (in Information Theory in Psychology, 1955).
 
     Examples
     --------
@@ -269,7 +269,7 @@ def first_order_bias(spectrum: npt.ArrayLike, copies: int, *, gradient: npt.Arra
 
     References
     ----------
-    Derived in docs/theory.md.
+    Derived in docs/derivations.md.
 
     Examples
     --------

@@ -137,7 +137,7 @@ def _surrogate_moments(spectrum: FloatArray, copies: int) -> tuple[FloatArray, F
 
     The rows plus d - i are (d-1)/2 plus the eigenvalues of n diag(p) + sqrt(n) H with H Hermitian, its diagonal
     normal with covariance diag p - p p^T, the other entries complex normal with E|H_ij|^2 = (p_i + p_j)/2
-    (derived in docs/theory.md). H and -H are used together, so that the diagonal averages to zero.
+    (derived in docs/derivations.md). H and -H are used together, so that the diagonal averages to zero.
     """
     d = len(spectrum)
     generator = np.random.default_rng(SEED)

@@ -14,7 +14,7 @@ References
 ----------
 Hough, Krishnapur, Peres, Virag, Probab. Surv. 3 (2006) 206, doi:10.1214/154957806000000078 (projection ensembles);
 Johansson, Ann. Math. 153 (2001) 259, doi:10.2307/2661375 (the Poissonised law and the Charlier ensemble).
-The pair of ensembles and its weight are derived in docs/theory.md.
+The pair of ensembles and its weight are derived in docs/derivations.md.
 """
 
 from __future__ import annotations

@@ -102,7 +102,7 @@ def span_of_poissons(means: FloatArray, x: FloatArray) -> ScaledColumns:
     References
     ----------
     Macdonald, Symmetric Functions and Hall Polynomials (1995), I.2, for h; Szego, Orthogonal Polynomials (1975),
-    2.81, for the Charlier polynomials. The expansion is derived in docs/theory.md.
+    2.81, for the Charlier polynomials. The expansion is derived in docs/derivations.md.
 
     Examples
     --------

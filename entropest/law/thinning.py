@@ -68,7 +68,7 @@ def thin(shapes: npt.ArrayLike, copies: int, *, rng: RngLike = None) -> IntArray
     exactly the result of repeated down-steps. Where the rows are far enough apart, boxes are removed many at a
     time: with l_i = row_i + R - i for the R non-empty rows, removing s boxes is drawing s of the sum of l_i
     balls without replacement, reweighted by prod_{i<j} (l_i - l_j) after the draw, on the condition that no two
-    l_i become equal on the way (derived in docs/theory.md). Draws from a multinomial law are accepted with the
+    l_i become equal on the way (derived in docs/derivations.md). Draws from a multinomial law are accepted with the
     probability that makes this exact. The number of rounds grows like log(n / copies) for well separated
     eigenvalues and like sqrt(n) at ties.
 

@@ -2,6 +2,7 @@
 
 from entropest.records.counts import DiagramCounts
 from entropest.records.files import read_record, write_record
+from entropest.records.moment_counts import MomentCounts
 from entropest.records.two_copy import JointSwapCounts, TwoCopyShots
 
-__all__ = ["DiagramCounts", "JointSwapCounts", "TwoCopyShots", "read_record", "write_record"]
+__all__ = ["DiagramCounts", "JointSwapCounts", "MomentCounts", "TwoCopyShots", "read_record", "write_record"]

@@ -8,8 +8,9 @@ from typing import NamedTuple
 from entropest._checks import LARGEST_COUNT
 from entropest.errors import ArgumentValueError, RecordFileError
 from entropest.records.counts import DiagramCounts
-from entropest.records.csv_tables import SiteTable, Table, TallyTable
+from entropest.records.csv_tables import MomentTable, SiteTable, Table, TallyTable
 from entropest.records.fields import read_whole, split_fields
+from entropest.records.moment_counts import MomentCounts
 from entropest.records.text_source import FieldError, bad_line, decoded
 from entropest.records.two_copy import TwoCopyShots
 from entropest.shapes import LARGEST_ROW
@@ -22,7 +23,8 @@ TALLY_HEADERS = (
     ("swap", "count"),
     ("swap",),
 )
-HEADERS = " | ".join([*map(",".join, TALLY_HEADERS), "site0,site1,... with or without accepted"])
+MOMENT_HEADER = ("order", "plus", "minus")
+HEADERS = " | ".join([*map(",".join, (*TALLY_HEADERS, MOMENT_HEADER)), "site0,site1,... with or without accepted"])
 SETTING = re.compile(r"#\s*(dim|site_dim|rejected)\s*:\s*(.*)", re.IGNORECASE)
 
 
@@ -34,7 +36,9 @@ class Setting(NamedTuple):
     value: int
 
 
-def read_csv(blocks: Iterator[bytes], file: str, *, dim: int | None = None) -> DiagramCounts | TwoCopyShots:
+def read_csv(
+    blocks: Iterator[bytes], file: str, *, dim: int | None = None
+) -> DiagramCounts | MomentCounts | TwoCopyShots:
     """Read a CSV record from blocks of whole lines; `file` names it in messages."""
     table, number, rest = _read_head(blocks, file, dim)
     empty = True
@@ -88,7 +92,7 @@ def _setting_value(name: str, text: str) -> int:
 def _columns(raw: bytes) -> tuple[str, ...]:
     """Return the columns that a header names, or say which headers are known."""
     columns = tuple(name.lower() for name in split_fields(decoded(raw).strip()))
-    if columns in TALLY_HEADERS:
+    if columns in TALLY_HEADERS or columns == MOMENT_HEADER:
         return columns
     sites = [name for name in columns if name != "accepted"]
     if not sites or not all(re.fullmatch(r"site[0-9]+", name) for name in sites):
@@ -104,7 +108,7 @@ def _columns(raw: bytes) -> tuple[str, ...]:
 
 def _table(columns: tuple[str, ...], settings: dict[str, Setting], file: str, dim: int | None) -> Table:
     """Return the table that a header announces, set up as the settings and the caller's `dim` say."""
-    sites = columns not in TALLY_HEADERS
+    sites = columns not in TALLY_HEADERS and columns != MOMENT_HEADER
     for name, setting in settings.items():
         if sites == (name == "dim"):
             what = "a table of sites" if sites else f"a table with the header {','.join(columns)}"
@@ -127,7 +131,7 @@ def _table(columns: tuple[str, ...], settings: dict[str, Setting], file: str, di
             problem = FieldError(f"dim {wanted}, as {why}", f"dim {setting.value}")
             raise bad_line(file, setting.number, setting.line, problem)
         wanted = setting.value
-    return TallyTable(columns, wanted)
+    return MomentTable(columns, wanted) if columns == MOMENT_HEADER else TallyTable(columns, wanted)
 
 
 def _read_lines(block: bytes, file: str, number: int, table: Table) -> list[object]:

@@ -10,6 +10,7 @@ from entropest._types import IntArray
 from entropest.records import csv_blocks, fields
 from entropest.records.counts import DiagramCounts
 from entropest.records.grouping import grouped, stacked, tabulated
+from entropest.records.moment_counts import MomentCounts
 from entropest.records.text_source import FieldError
 from entropest.records.two_copy import TwoCopyShots
 
@@ -33,7 +34,7 @@ class Table(ABC):
         """Take what `read_line` returned for the lines of a block, in their order."""
 
     @abstractmethod
-    def record(self) -> DiagramCounts | TwoCopyShots:
+    def record(self) -> DiagramCounts | MomentCounts | TwoCopyShots:
         """Return the record of all that was taken."""
 
 
@@ -82,6 +83,33 @@ class TallyTable(Table):
     def record(self) -> DiagramCounts:
         """Merge the blocks, letting go of each as it is copied."""
         return DiagramCounts.from_checked(*stacked(self._parts), self._dim)
+
+
+class MomentTable(Table):
+    """Orders of cyclic-shift tests with their tallies of + and -; an order may come more than once."""
+
+    def __init__(self, columns: tuple[str, ...], dim: int | None) -> None:
+        super().__init__(columns)
+        self._dim = dim
+        self._tallies: dict[int, tuple[int, int]] = {}
+
+    def take_block(self, block: bytes) -> bool:
+        """Take nothing: such records are a few lines long and read line by line."""
+        return False
+
+    def read_line(self, values: list[str]) -> tuple[int, int, int]:
+        """Return order, plus and minus of one line."""
+        return fields.read_order(values[0]), fields.read_count(values[1]), fields.read_count(values[2])
+
+    def take_lines(self, lines: list[tuple[int, int, int]]) -> None:
+        """Add up the tallies of each order."""
+        for order, plus, minus in lines:
+            before = self._tallies.get(order, (0, 0))
+            self._tallies[order] = (before[0] + plus, before[1] + minus)
+
+    def record(self) -> MomentCounts:
+        """Return the tallies as a record."""
+        return MomentCounts(self._tallies, dim=self._dim)
 
 
 class SiteTable(Table):

@@ -1,6 +1,7 @@
 """Fields of a line: each reader returns the value or says what was expected."""
 
 from entropest._checks import LARGEST_COUNT
+from entropest.records.moment_counts import LARGEST_SHIFT
 from entropest.records.text_source import FieldError
 from entropest.shapes import LARGEST_ROW
 
@@ -22,6 +23,14 @@ def read_whole(text: str, what: str, largest: int) -> int:
 def read_count(text: str) -> int:
     """Read a tally."""
     return read_whole(text, "a count", LARGEST_COUNT)
+
+
+def read_order(text: str) -> int:
+    """Read the order of a cyclic-shift test."""
+    order = read_whole(text, "an order", LARGEST_SHIFT)
+    if order < 2:
+        raise FieldError("an order of at least 2", text)
+    return order
 
 
 def read_rows(text: str, dim: int | None) -> tuple[int, ...]:

@@ -14,6 +14,7 @@ from entropest.errors import ArgumentTypeError, ArgumentValueError, EntropestErr
 from entropest.records.counts import DiagramCounts
 from entropest.records.csv_format import read_csv
 from entropest.records.json_format import read_json, to_json
+from entropest.records.moment_counts import MomentCounts
 from entropest.records.text_source import line_blocks, pieces
 from entropest.records.two_copy import TwoCopyShots
 from entropest.shapes import LARGEST_ROW
@@ -23,7 +24,7 @@ __all__ = ["read_record", "write_record"]
 
 def read_record(
     path: str | os.PathLike[str] | IO[str] | IO[bytes], *, dim: int | None = None
-) -> DiagramCounts | TwoCopyShots:
+) -> DiagramCounts | MomentCounts | TwoCopyShots:
     r"""Read a record from a CSV or JSON file.
 
     Parameters
@@ -35,7 +36,7 @@ def read_record(
 
     Returns
     -------
-    DiagramCounts, or TwoCopyShots for a table of sites.
+    DiagramCounts; MomentCounts for a table of orders; TwoCopyShots for a table of sites.
 
     Raises
     ------
@@ -52,6 +53,7 @@ def read_record(
     - ``diagram,count`` or ``diagram`` (one block a line): rows joined by ``+``, such as ``3+1``;
     - ``two_j,copies,count`` or ``two_j,copies``: twice the total spin of that many qubits;
     - ``swap,count`` or ``swap``: ``symmetric`` or ``antisymmetric``, blocks of two copies;
+    - ``order,plus,minus``: tallies of cyclic-shift tests of each order;
     - ``site0,site1,...``, numbered from 0 in order, and perhaps ``accepted``: one shot a line, 1 where the
       two copies of the site were found antisymmetric.
 
@@ -62,6 +64,7 @@ def read_record(
 
     JSON is an object with ``"schema": "entropest-record/1"`` and either ``"kind": "diagrams"``, ``"dim"``
     (a number, or null for unknown) and ``"counts"`` (an object such as ``{"3+1": 12}``), or
+    ``"kind": "moments"``, ``"dim"`` and ``"tallies"`` (an object such as ``{"2": [70, 30]}``), or
     ``"kind": "two_copy_shots"``, ``"site_dim"``, ``"rejected"`` and ``"shots"`` (a list of texts such as
     ``"0110"``, one letter a site).
 
@@ -96,7 +99,7 @@ def read_record(
             raise RecordFileError(f"{file}: {error}") from error
 
 
-def _read(data: Iterator[bytes], file: str, dim: int | None) -> DiagramCounts | TwoCopyShots:
+def _read(data: Iterator[bytes], file: str, dim: int | None) -> DiagramCounts | MomentCounts | TwoCopyShots:
     """Read JSON if the first letter is a brace, otherwise CSV."""
     first = next(data, b"")
     whole = chain([first], data)
@@ -105,7 +108,7 @@ def _read(data: Iterator[bytes], file: str, dim: int | None) -> DiagramCounts | 
     return read_csv(line_blocks(whole, file), file, dim=dim)
 
 
-def write_record(record: DiagramCounts | TwoCopyShots, path: str | os.PathLike[str]) -> None:
+def write_record(record: DiagramCounts | MomentCounts | TwoCopyShots, path: str | os.PathLike[str]) -> None:
     """Write a record as CSV or JSON, as the suffix of the path says.
 
     The text goes to a temporary file beside `path`, which then takes its place: an interrupted write leaves
@@ -127,8 +130,10 @@ def write_record(record: DiagramCounts | TwoCopyShots, path: str | os.PathLike[s
     ...     read_record(path)
     DiagramCounts({'2': 80, '1+1': 20}, dim=2)
     """
-    if not isinstance(record, DiagramCounts | TwoCopyShots):
-        raise ArgumentTypeError(f"record must be DiagramCounts or TwoCopyShots, got {type(record).__name__}")
+    if not isinstance(record, DiagramCounts | MomentCounts | TwoCopyShots):
+        raise ArgumentTypeError(
+            f"record must be DiagramCounts, MomentCounts or TwoCopyShots, got {type(record).__name__}"
+        )
     suffix = Path(path).suffix.lower()
     if suffix == ".csv":
         pieces = record.canonical_csv()

@@ -9,20 +9,24 @@ import numpy as np
 from entropest._checks import LARGEST_COUNT, as_count
 from entropest.errors import EntropestError, RecordFileError
 from entropest.records.counts import DiagramCounts
-from entropest.records.fields import read_rows
+from entropest.records.fields import read_order, read_rows
 from entropest.records.grouping import tabulated
+from entropest.records.moment_counts import MomentCounts
 from entropest.records.text_source import FieldError, decoded, shown
 from entropest.records.two_copy import TwoCopyShots
 
 SCHEMA = "entropest-record/1"
-NEEDED = {"diagrams": {"counts"}, "two_copy_shots": {"shots"}}
-OPTIONAL = {"diagrams": {"dim"}, "two_copy_shots": {"site_dim", "rejected"}}
+NEEDED = {"diagrams": {"counts"}, "moments": {"tallies"}, "two_copy_shots": {"shots"}}
+OPTIONAL = {"diagrams": {"dim"}, "moments": {"dim"}, "two_copy_shots": {"site_dim", "rejected"}}
 
 
-def to_json(record: DiagramCounts | TwoCopyShots) -> str:
+def to_json(record: DiagramCounts | MomentCounts | TwoCopyShots) -> str:
     """Return a record as JSON text that reads back to an equal record."""
     if isinstance(record, DiagramCounts):
         content: dict[str, Any] = {"kind": "diagrams", "dim": record.dim, "counts": dict(record.text_items())}
+    elif isinstance(record, MomentCounts):
+        tallies = {str(order): list(pair) for order, pair in record.tallies.items()}
+        content = {"kind": "moments", "dim": record.dim, "tallies": tallies}
     else:
         bits = record.singlets.astype(np.uint8) + np.uint8(ord("0"))
         shots = [row.tobytes().decode("ascii") for row in bits]
@@ -35,7 +39,7 @@ def to_json(record: DiagramCounts | TwoCopyShots) -> str:
     return json.dumps({"schema": SCHEMA, **content}, indent=1) + "\n"
 
 
-def read_json(data: bytes, file: str, *, dim: int | None = None) -> DiagramCounts | TwoCopyShots:
+def read_json(data: bytes, file: str, *, dim: int | None = None) -> DiagramCounts | MomentCounts | TwoCopyShots:
     """Read a JSON record; `file` names it in messages."""
     try:
         text = data.decode("utf-8")
@@ -54,7 +58,7 @@ def read_json(data: bytes, file: str, *, dim: int | None = None) -> DiagramCount
         raise RecordFileError(f"{file}: {error}") from None
 
 
-def _record(content: object, dim: int | None) -> DiagramCounts | TwoCopyShots:
+def _record(content: object, dim: int | None) -> DiagramCounts | MomentCounts | TwoCopyShots:
     if not isinstance(content, dict):
         raise FieldError("a JSON object", type(content).__name__)
     if content.get("schema") != SCHEMA:
@@ -67,21 +71,43 @@ def _record(content: object, dim: int | None) -> DiagramCounts | TwoCopyShots:
         raise FieldError(f"the key {min(missing)} for kind {kind}", "none")
     if unknown := keys - NEEDED[kind] - OPTIONAL[kind]:
         raise FieldError(f"no other keys for kind {kind}", min(unknown))
+    if kind == "moments":
+        return _moments(content, dim)
     return _diagrams(content, dim) if kind == "diagrams" else _shots(content, dim)
 
 
 def _diagrams(content: dict[str, Any], dim: int | None) -> DiagramCounts:
-    counts, stated = content["counts"], content.get("dim")
+    counts = content["counts"]
     if not isinstance(counts, dict):
         raise FieldError('counts to be an object such as {"3+1": 12}', type(counts).__name__)
-    if dim is not None and stated is not None and stated != dim:
-        raise FieldError(f"dim {dim}, as asked for", f"dim {stated!r}")
-    wanted = stated if dim is None else dim
     tallies: dict[tuple[int, ...], int] = {}
     for text, count in counts.items():
         rows = read_rows(text, None)
         tallies[rows] = tallies.get(rows, 0) + _tally(count, text)
-    return DiagramCounts.from_checked(*tabulated(tallies), wanted)
+    return DiagramCounts.from_checked(*tabulated(tallies), _dimension(content, dim))
+
+
+def _moments(content: dict[str, Any], dim: int | None) -> MomentCounts:
+    tallies = content["tallies"]
+    if not isinstance(tallies, dict):
+        raise FieldError('tallies to be an object such as {"2": [70, 30]}', type(tallies).__name__)
+    pairs: dict[int, tuple[int, int]] = {}
+    for text, pair in tallies.items():
+        order = read_order(text)
+        if order in pairs:
+            raise FieldError("each order once", text)
+        if not isinstance(pair, list) or len(pair) != 2:
+            raise FieldError(f"a list of two tallies for order {order}", shown(repr(pair)))
+        pairs[order] = (as_count(pair[0], f"plus of order {order}"), as_count(pair[1], f"minus of order {order}"))
+    return MomentCounts(pairs, dim=_dimension(content, dim))
+
+
+def _dimension(content: dict[str, Any], dim: int | None) -> int | None:
+    """Return the dimension that the record states, or the one asked for."""
+    stated: int | None = content.get("dim")
+    if dim is not None and stated is not None and stated != dim:
+        raise FieldError(f"dim {dim}, as asked for", f"dim {stated!r}")
+    return stated if dim is None else dim
 
 
 def _tally(count: Any, diagram: str) -> int:

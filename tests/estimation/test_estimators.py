@@ -6,8 +6,10 @@ import math
 import numpy as np
 import pytest
 
+from entropest.diagrams import YoungDiagram
 from entropest.errors import NotCoveredError
 from entropest.estimation import ESTIMATORS, Continuation, Corrected, Estimator, PlugIn
+from entropest.estimation.estimators import Jackknife
 from entropest.estimation.power_sums import continuation_jet, continuation_power_sum, entropy_continuation
 from entropest.functionals import (
     ChiSquare,
@@ -33,7 +35,10 @@ def mean_over_diagrams(estimator, spectrum, copies):
 
 
 def test_every_estimator_says_where_it_comes_from():
-    assert list(ESTIMATORS) == ["plug-in", "corrected", "continuation"]
+    posteriors = {"posterior mean", "averaged posterior", "split posterior"}
+    assert {"plug-in", "corrected", "jackknife", "continuation", "likelihood", "moment fit"} | posteriors <= set(
+        ESTIMATORS
+    )
     for make in ESTIMATORS.values():
         text = inspect.getdoc(make)
         assert all(word in text for word in ("Source:", "Cost:", "Regime:"))
@@ -121,3 +126,45 @@ def test_no_estimator_fails_at_the_edges(name, text):
     for dim in (4, None):
         value = ESTIMATORS[name](VonNeumann())(DiagramCounts({text: 2}, dim=dim))
         assert math.isfinite(value)
+
+
+def test_jackknife_is_the_average_over_all_ways_to_drop_a_copy():
+    """A plain twin: every standard tableau is as likely, and the copy to be dropped holds its last box."""
+    record = DiagramCounts({"3+2": 1, "2+1": 2}, dim=2)
+    blocks = [YoungDiagram((3, 2)), YoungDiagram((2, 1)), YoungDiagram((2, 1))]
+    total, without = 11, 0.0
+    for block in blocks:
+        for row in range(2):
+            rows = list(block.rows)
+            rows[row] -= 1
+            if rows[0] >= rows[1]:
+                share = YoungDiagram(rows).standard_tableaux / block.standard_tableaux
+                left = np.array([7, 4]) - np.eye(2)[row]
+                without += block.size / total * share * VonNeumann()(left / 10)
+    assert Jackknife()(record) == pytest.approx(11 * VonNeumann()([7 / 11, 4 / 11]) - 10 * without)
+
+
+def test_jackknife_removes_the_bias_of_first_order():
+    """Exact enumeration: the bias falls like n^-2 for distinct eigenvalues and stays below that of the plug-in."""
+    spectrum = [0.7, 0.3]
+    truth = VonNeumann()(spectrum)
+    biases = [mean_over_diagrams(Jackknife(), spectrum, n) - truth for n in (60, 120)]
+    assert abs(biases[1]) < 0.35 * abs(biases[0])
+    assert abs(biases[0]) < 0.1 * abs(mean_over_diagrams(PlugIn(), spectrum, 60) - truth)
+
+
+def test_jackknife_of_a_power_sum_is_nearly_unbiased():
+    """The plug-in purity has a bias of the form a/n exactly in 1/n up to order 2: what is left is of order 1/n^2."""
+    spectrum = [0.6, 0.3, 0.1]
+    truth = PowerSum(2)(spectrum)
+    left = [mean_over_diagrams(Jackknife(PowerSum(2)), spectrum, n) - truth for n in (10, 20)]
+    plain = [mean_over_diagrams(PlugIn(PowerSum(2)), spectrum, n) - truth for n in (10, 20)]
+    assert abs(left[0]) < 0.2 * abs(plain[0])
+    assert abs(left[1]) < 0.2 * abs(plain[1])
+
+
+def test_jackknife_keeps_what_is_infinite_or_has_one_copy():
+    reference = RelativeEntropy([1.0, 0.0, 0.0])
+    assert Jackknife(reference)(DiagramCounts({"3+1": 1}, dim=3)) == math.inf
+    assert Jackknife(RelativeEntropy([0.5, 0.3, 0.2]))(DiagramCounts({"3": 1}, dim=3)) == pytest.approx(math.log(2))
+    assert Jackknife()(DiagramCounts({"1": 1})) == 0.0

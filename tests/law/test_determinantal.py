@@ -90,7 +90,7 @@ SMALL_CASES = {
     "two copies": ([0.5, 0.3, 0.2], 2),
     "geometric, d=6": (geometric(6, 0.3).tolist(), 8),
     "uniform, d=6": (maximally_mixed(6).tolist(), 8),
-    "more rows than boxes": (maximally_mixed(10).tolist(), 5),
+    "more rows than boxes": (maximally_mixed(8).tolist(), 5),
 }
 
 

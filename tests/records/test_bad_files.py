@@ -189,8 +189,8 @@ def json_record(**content):
             ": expected schema \"entropest-record/1\", got 'entropest-record/2'",
         ),
         (json_record(schema=["x"]), ": expected schema"),
-        (json_record(kind="other"), ": expected kind diagrams or two_copy_shots, got 'other'"),
-        (json_record(kind=["diagrams"]), ": expected kind diagrams or two_copy_shots"),
+        (json_record(kind="other"), ": expected kind diagrams or moments or two_copy_shots, got 'other'"),
+        (json_record(kind=["diagrams"]), ": expected kind diagrams or moments or two_copy_shots"),
         (json_record(note="x"), ": expected no other keys for kind diagrams, got note"),
         (
             '{"schema": "entropest-record/1", "kind": "diagrams"}',

@@ -202,7 +202,7 @@ def test_what_cannot_be_written_is_refused(tmp_path):
     record = DiagramCounts({"2": 1})
     with pytest.raises(ArgumentValueError, match=r"path must end in \.csv or \.json, got"):
         write_record(record, tmp_path / "record.txt")
-    with pytest.raises(ArgumentTypeError, match="record must be DiagramCounts or TwoCopyShots, got dict"):
+    with pytest.raises(ArgumentTypeError, match="record must be DiagramCounts, MomentCounts or TwoCopyShots, got dict"):
         write_record({"2": 1}, tmp_path / "record.csv")
     with pytest.raises(FileNotFoundError):
         write_record(record, tmp_path / "missing" / "record.csv")

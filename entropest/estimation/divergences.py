@@ -1,0 +1,147 @@
+"""Relative entropies of a state to known references that its own eigenbasis does not matter for, or is measured."""
+
+import math
+from dataclasses import replace
+
+import numpy as np
+import numpy.typing as npt
+from scipy.special import logsumexp, ndtri
+
+from entropest._checks import as_confidence, as_real
+from entropest.errors import ArgumentValueError
+from entropest.estimation.estimate import estimate
+from entropest.estimation.result import Estimate
+from entropest.functionals import RelativeEntropy, VonNeumann
+from entropest.records.counts import DiagramCounts
+from entropest.records.moment_counts import MomentCounts
+from entropest.spectra import maximally_mixed, thermal
+
+__all__ = ["relative_entropy_to_gibbs", "relative_entropy_to_mixed"]
+
+
+def relative_entropy_to_mixed(
+    counts: DiagramCounts | MomentCounts, *, method: str = "auto", confidence: float = 0.95, base: float | None = None
+) -> Estimate:
+    """Estimate the relative entropy to the maximally mixed state, D = log d - S, from a record of known dimension.
+
+    Value and interval are those of the von Neumann entropy, turned round; they are exact statements about the
+    states, because the maximally mixed state has every basis as its eigenbasis.
+
+    Parameters
+    ----------
+    counts, method, confidence, base
+        As for :func:`entropest.estimate`; the record must state its dimension.
+
+    Raises
+    ------
+    ArgumentValueError
+        If the dimension of the record is not known.
+
+    Examples
+    --------
+    >>> found = relative_entropy_to_mixed(DiagramCounts({"571+286+143": 1}, dim=3))
+    >>> round(found.value, 2), found.functional.name
+    (0.14, 'relative entropy')
+    """
+    if counts.dim is None:
+        raise ArgumentValueError("dim must be known for the relative entropy to the maximally mixed state, got None")
+    entropy = estimate(counts, VonNeumann(), method=method, confidence=confidence)
+    return _turned(entropy, math.log(counts.dim), 0.0, RelativeEntropy(maximally_mixed(counts.dim)), confidence, base)
+
+
+def relative_entropy_to_gibbs(
+    counts: DiagramCounts | MomentCounts,
+    energies: npt.ArrayLike,
+    beta: float,
+    *,
+    mean_energy: float,
+    energy_error: float = 0.0,
+    method: str = "auto",
+    confidence: float = 0.95,
+    base: float | None = None,
+) -> Estimate:
+    """Estimate the relative entropy to a Gibbs state, D = beta <H> + log Z - S, with <H> measured separately.
+
+    Half of the error goes to the entropy and half to the energy, whose error is taken as normal. No relation
+    between the eigenbasis of the state and that of H is assumed.
+
+    Parameters
+    ----------
+    counts : DiagramCounts or MomentCounts
+        The record.
+    energies : (d,) array_like
+        All eigenvalues of H, degenerate ones repeated; their number is the dimension of the record.
+    beta : float
+        Inverse temperature; beta times an energy is a number.
+    mean_energy, energy_error : float
+        Measured Tr rho H and its standard error.
+    method, confidence, base
+        As for :func:`entropest.estimate`.
+
+    Raises
+    ------
+    ArgumentValueError
+        If the number of energies is not the dimension, or the mean energy lies beyond the energies by more than
+        five standard errors.
+
+    References
+    ----------
+    Donald, J. Stat. Phys. 44 (1986) 81, doi:10.1007/BF01010905 (relative entropy to a Gibbs state as free energy).
+
+    Examples
+    --------
+    >>> record = DiagramCounts({"731+269": 1}, dim=2)
+    >>> found = relative_entropy_to_gibbs(record, [0.0, 1.0], 1.0, mean_energy=0.4, energy_error=0.01)
+    >>> round(found.value, 2), round(found.standard_error, 3)
+    (0.13, 0.017)
+    """
+    reference = thermal(energies, beta)
+    levels = np.asarray(energies, dtype=np.float64)
+    if counts.dim is not None and counts.dim != len(levels):
+        raise ArgumentValueError(
+            f"energies must be as many as the record has dimensions, {counts.dim}, got {len(levels)}"
+        )
+    confidence = as_confidence(confidence)
+    mean, error = as_real(mean_energy, "mean_energy"), as_real(energy_error, "energy_error")
+    if error < 0.0:
+        raise ArgumentValueError(f"energy_error must not be negative, got {error}")
+    if not levels.min() - 5.0 * error <= mean <= levels.max() + 5.0 * error:
+        raise ArgumentValueError(
+            f"mean_energy must lie between the energies {levels.min():g} and {levels.max():g}, got {mean:g}"
+        )
+    half = 0.5 * (1.0 + confidence)
+    entropy = estimate(counts, VonNeumann(), method=method, confidence=half)
+    offset = beta * mean + float(logsumexp(-beta * levels))
+    found = _turned(entropy, offset, abs(beta) * error, RelativeEntropy(reference), half, base)
+    notes = (*found.notes, f"half of the error for the entropy, half for the energy {mean:g} +- {error:g} (normal)")
+    return replace(found, confidence=confidence, notes=notes)
+
+
+def _turned(
+    entropy: Estimate,
+    offset: float,
+    deviation: float,
+    functional: RelativeEntropy,
+    confidence: float,
+    base: float | None,
+) -> Estimate:
+    """Return offset - S, the offset known up to a normal error, cut at zero."""
+    reach = float(ndtri(0.5 + 0.5 * confidence)) * deviation
+    ends = (offset - reach - entropy.interval[1], offset + reach - entropy.interval[0])
+    scale = functional.scale(base)
+    notes = list(entropy.notes)
+    value = None if entropy.value is None else offset - entropy.value
+    if value is not None and value < 0.0:
+        notes.append(f"the estimate {value:.4g} nat is negative and was capped at 0")
+        value = 0.0
+    low, high = sorted(max(0.0, end) / scale for end in ends)
+    error = entropy.standard_error
+    return replace(
+        entropy,
+        value=None if value is None else value / scale,
+        interval=(low, high),
+        standard_error=None if error is None else math.hypot(error, deviation) / abs(scale),
+        functional=functional,
+        unit=functional.unit(base),
+        notes=tuple(notes),
+    )
