@@ -13,10 +13,25 @@ if TYPE_CHECKING:
     from entropest.certification.certify import certify
     from entropest.certification.recheck import recheck
     from entropest.diagrams import YoungDiagram, cycle_character, young_diagrams
+    from entropest.estimation.divergences import (
+        relative_entropy_in_eigenbasis,
+        relative_entropy_to_gibbs,
+        relative_entropy_to_mixed,
+    )
     from entropest.estimation.estimate import estimate
+    from entropest.estimation.estimators import ESTIMATORS
+    from entropest.estimation.histogram import histogram_entropy
+    from entropest.estimation.inner_range import identified_range, identified_range_of
+    from entropest.estimation.likelihood import fit_likelihood
+    from entropest.estimation.many import ManyEstimates, estimate_many
+    from entropest.estimation.moment_tallies import estimate_together
     from entropest.estimation.result import Estimate
+    from entropest.estimation.two_spectra import compare_spectra
+    from entropest.estimation.two_states import compare_states
     from entropest.functionals import (
         ChiSquare,
+        Fidelity,
+        HilbertSchmidtDistance,
         MinEntropy,
         PowerSum,
         RelativeEntropy,
@@ -54,10 +69,31 @@ _HOMES = {
         "cycle_character",
         "young_diagrams",
     ),
+    "entropest.estimation.divergences": (
+        "relative_entropy_in_eigenbasis",
+        "relative_entropy_to_gibbs",
+        "relative_entropy_to_mixed",
+    ),
     "entropest.estimation.estimate": ("estimate",),
+    "entropest.estimation.estimators": ("ESTIMATORS",),
+    "entropest.estimation.histogram": ("histogram_entropy",),
+    "entropest.estimation.inner_range": (
+        "identified_range",
+        "identified_range_of",
+    ),
+    "entropest.estimation.likelihood": ("fit_likelihood",),
+    "entropest.estimation.many": (
+        "ManyEstimates",
+        "estimate_many",
+    ),
+    "entropest.estimation.moment_tallies": ("estimate_together",),
     "entropest.estimation.result": ("Estimate",),
+    "entropest.estimation.two_spectra": ("compare_spectra",),
+    "entropest.estimation.two_states": ("compare_states",),
     "entropest.functionals": (
         "ChiSquare",
+        "Fidelity",
+        "HilbertSchmidtDistance",
         "MinEntropy",
         "PowerSum",
         "RelativeEntropy",
@@ -95,11 +131,15 @@ _HOMES = {
 _HOME = {name: module for module, names in _HOMES.items() for name in names}
 
 __all__ = [
+    "ESTIMATORS",
     "Certificate",
     "ChiSquare",
     "DiagramCounts",
     "Estimate",
+    "Fidelity",
+    "HilbertSchmidtDistance",
     "JointSwapCounts",
+    "ManyEstimates",
     "MinEntropy",
     "MomentCounts",
     "PowerSum",
@@ -115,16 +155,27 @@ __all__ = [
     "__version__",
     "as_spectrum",
     "certify",
+    "compare_spectra",
+    "compare_states",
     "cycle_character",
     "estimate",
+    "estimate_many",
+    "estimate_together",
+    "fit_likelihood",
     "free_fermion_half_chain",
     "geometric",
+    "histogram_entropy",
+    "identified_range",
+    "identified_range_of",
     "low_rank",
     "maximally_mixed",
     "power_law",
     "random_reduced",
     "read_record",
     "recheck",
+    "relative_entropy_in_eigenbasis",
+    "relative_entropy_to_gibbs",
+    "relative_entropy_to_mixed",
     "schur_polynomial",
     "spectrum_of_state",
     "spiked",

@@ -8,15 +8,16 @@ import numpy.typing as npt
 from scipy.special import logsumexp, ndtri
 
 from entropest._checks import as_confidence, as_real
+from entropest._types import IntArray
 from entropest.errors import ArgumentValueError
 from entropest.estimation.estimate import estimate
 from entropest.estimation.result import Estimate
 from entropest.functionals import RelativeEntropy, VonNeumann
 from entropest.records.counts import DiagramCounts
 from entropest.records.moment_counts import MomentCounts
-from entropest.spectra import maximally_mixed, thermal
+from entropest.spectra import as_spectrum, maximally_mixed, thermal
 
-__all__ = ["relative_entropy_to_gibbs", "relative_entropy_to_mixed"]
+__all__ = ["relative_entropy_in_eigenbasis", "relative_entropy_to_gibbs", "relative_entropy_to_mixed"]
 
 
 def relative_entropy_to_mixed(
@@ -115,6 +116,95 @@ def relative_entropy_to_gibbs(
     found = _turned(entropy, offset, abs(beta) * error, RelativeEntropy(reference), half, base)
     notes = (*found.notes, f"half of the error for the entropy, half for the energy {mean:g} +- {error:g} (normal)")
     return replace(found, confidence=confidence, notes=notes)
+
+
+def relative_entropy_in_eigenbasis(
+    counts: DiagramCounts | MomentCounts,
+    reference: npt.ArrayLike,
+    populations: npt.ArrayLike,
+    *,
+    method: str = "auto",
+    confidence: float = 0.95,
+    base: float | None = None,
+) -> Estimate:
+    """Estimate the relative entropy to a known reference whose eigenbasis was measured on further copies.
+
+    With w_j the populations of the state in the eigenbasis of the reference, D = sum_j w_j (-log q_j) - S. Half of the
+    error goes to the entropy and half to the populations, whose mean of -log q_j is taken as normal.
+
+    Parameters
+    ----------
+    counts : DiagramCounts or MomentCounts
+        The record.
+    reference : (d,) array_like
+        Eigenvalues q_j of the reference, in any order.
+    populations : (d,) array_like of int
+        How often level j of the reference was found on single copies, in the order of `reference`.
+    method, confidence, base
+        As for :func:`entropest.estimate`.
+
+    Returns
+    -------
+    Estimate
+        Infinite (a value of inf) if a level was found that the reference gives no weight.
+
+    Raises
+    ------
+    ArgumentValueError
+        If reference and populations differ in length, nothing was counted, or the dimensions disagree.
+
+    References
+    ----------
+    Umegaki, Kodai Math. Sem. Rep. 14 (1962) 59, doi:10.2996/kmj/1138844604 (quantum relative entropy).
+
+    Examples
+    --------
+    >>> record = DiagramCounts({"731+269": 1}, dim=2)
+    >>> found = relative_entropy_in_eigenbasis(record, [0.6, 0.4], [520, 480])
+    >>> round(found.value, 2), round(found.standard_error, 3)
+    (0.13, 0.016)
+    """
+    weights = np.asarray(reference, dtype=np.float64)
+    as_spectrum(weights)
+    tallies = _tallies(populations)
+    if tallies.shape != weights.shape:
+        raise ArgumentValueError(f"populations must be as many as the reference, {len(weights)}, got {tallies.shape}")
+    if counts.dim is not None and counts.dim != len(weights):
+        raise ArgumentValueError(f"reference must have the dimension {counts.dim} of the record, got {len(weights)}")
+    shots = int(tallies.sum())
+    if shots == 0:
+        raise ArgumentValueError("populations must hold at least one count, got none")
+    confidence = as_confidence(confidence)
+    half = 0.5 * (1.0 + confidence)
+    entropy = estimate(counts, VonNeumann(), method=method, confidence=half)
+    functional = RelativeEntropy(np.sort(weights)[::-1])
+    seen = tallies > 0
+    if (weights[seen] <= 0.0).any():
+        note = "a level was found that the reference gives no weight: the relative entropy is infinite"
+        return replace(
+            entropy,
+            value=math.inf,
+            interval=(math.inf, math.inf),
+            standard_error=None,
+            functional=functional,
+            unit=functional.unit(base),
+            confidence=confidence,
+            notes=(*entropy.notes, note),
+        )
+    surprise = -np.log(weights[seen])
+    mean = float(tallies[seen] @ surprise) / shots
+    error = math.sqrt(float(tallies[seen] @ (surprise - mean) ** 2) / shots / max(1, shots - 1))
+    found = _turned(entropy, mean, error, functional, half, base)
+    note = f"half of the error for the entropy, half for {shots} measured populations (normal)"
+    return replace(found, confidence=confidence, notes=(*found.notes, note))
+
+
+def _tallies(populations: npt.ArrayLike) -> IntArray:
+    """Return tallies as a one-dimensional array of non-negative whole numbers."""
+    tallies = np.asarray(populations)
+    if tallies.ndim != 1 or tallies.dtype.kind not in "iu" or (tallies.size and tallies.min() < 0):
+        raise ArgumentValueError(f"populations must be non-negative whole numbers, one a level, got {populations!r}")
+    return tallies.astype(np.int64)
 
 
 def _turned(

@@ -7,7 +7,11 @@ import pytest
 
 from entropest.errors import ArgumentValueError
 from entropest.estimation import estimate
-from entropest.estimation.divergences import relative_entropy_to_gibbs, relative_entropy_to_mixed
+from entropest.estimation.divergences import (
+    relative_entropy_in_eigenbasis,
+    relative_entropy_to_gibbs,
+    relative_entropy_to_mixed,
+)
 from entropest.functionals import Fidelity, HilbertSchmidtDistance, RelativeEntropy, VonNeumann
 from entropest.records import DiagramCounts, MomentCounts
 
@@ -90,3 +94,35 @@ def test_distance_and_fidelity_to_a_known_spectrum():
         assert found.interval[0] <= found.value <= found.interval[1]
     assert fidelity.interval[1] <= 1.0
     assert estimate(DiagramCounts({"40": 1}, dim=3), Fidelity((1.0, 0.0, 0.0))).value == pytest.approx(1.0)
+
+
+def test_a_measured_eigenbasis_against_explicit_matrices():
+    """Populations of a rotated state in the eigenbasis of the reference; D = Tr rho (log rho - log sigma)."""
+    q = np.array([0.5, 0.2, 0.3])
+    rng = np.random.default_rng(8)
+    unitary = np.linalg.qr(rng.normal(size=(3, 3)) + 1j * rng.normal(size=(3, 3)))[0]
+    p = np.array([0.571, 0.286, 0.143])
+    rho = unitary * p @ unitary.conj().T
+    populations = np.real(np.diag(rho))
+    exact = float(p @ np.log(p)) - float(populations @ np.log(q))
+    found = relative_entropy_in_eigenbasis(RECORD, q, np.round(1e6 * populations).astype(int))
+    assert found.interval[0] < exact < found.interval[1]
+    assert found.value == pytest.approx(exact, abs=3 * found.standard_error)
+    flat = relative_entropy_in_eigenbasis(RECORD, [1 / 3] * 3, [5, 2, 3])
+    assert flat.value == pytest.approx(relative_entropy_to_mixed(RECORD).value)
+
+
+def test_an_eigenbasis_without_support_gives_infinity_and_bad_populations_are_refused():
+    found = relative_entropy_in_eigenbasis(RECORD, [0.5, 0.5, 0.0], [5, 4, 1])
+    assert found.value == math.inf
+    assert found.to_dict()["value"] is None
+    assert math.isfinite(relative_entropy_in_eigenbasis(RECORD, [0.5, 0.5, 0.0], [5, 4, 0]).value)
+    for reference, populations, words in (
+        ([0.5, 0.5], [1, 2], "dimension 3"),
+        ([0.5, 0.3, 0.2], [1, 2], "as many as the reference"),
+        ([0.5, 0.3, 0.2], [0, 0, 0], "at least one count"),
+        ([0.5, 0.3, 0.2], [1.5, 2.0, 3.0], "whole numbers"),
+        ([0.5, 0.3, 0.2], [-1, 2, 3], "whole numbers"),
+    ):
+        with pytest.raises(ArgumentValueError, match=words):
+            relative_entropy_in_eigenbasis(RECORD, reference, populations)
