@@ -19,7 +19,6 @@ if TYPE_CHECKING:
         relative_entropy_to_mixed,
     )
     from entropest.estimation.estimate import estimate
-    from entropest.estimation.estimators import ESTIMATORS
     from entropest.estimation.histogram import histogram_entropy
     from entropest.estimation.inner_range import identified_range, identified_range_of
     from entropest.estimation.likelihood import fit_likelihood
@@ -75,7 +74,6 @@ _HOMES = {
         "relative_entropy_to_mixed",
     ),
     "entropest.estimation.estimate": ("estimate",),
-    "entropest.estimation.estimators": ("ESTIMATORS",),
     "entropest.estimation.histogram": ("histogram_entropy",),
     "entropest.estimation.inner_range": (
         "identified_range",
@@ -131,7 +129,6 @@ _HOMES = {
 _HOME = {name: module for module, names in _HOMES.items() for name in names}
 
 __all__ = [
-    "ESTIMATORS",
     "Certificate",
     "ChiSquare",
     "DiagramCounts",

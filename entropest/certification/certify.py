@@ -28,6 +28,7 @@ from entropest.certification.wording import assumptions, describe_method
 from entropest.errors import ArgumentTypeError, ArgumentValueError, NotCoveredError
 from entropest.functionals import Functional, PowerSum, Renyi, VonNeumann
 from entropest.records.counts import DiagramCounts
+from entropest.records.two_copy import TwoCopyShots
 from entropest.spectra import as_spectrum
 
 __all__ = ["certify"]
@@ -104,7 +105,8 @@ def certify(
     (True, 0.972)
     """
     if not isinstance(counts, DiagramCounts):
-        raise ArgumentTypeError(f"counts must be a DiagramCounts, got {type(counts).__name__}")
+        hint = ": name a region of it" if isinstance(counts, TwoCopyShots) else ""
+        raise ArgumentTypeError(f"counts must be a DiagramCounts, got {type(counts).__name__}{hint}")
     if not isinstance(functional, Functional):
         raise ArgumentTypeError(f"functional must be a functional such as VonNeumann(), got {functional!r}")
     claim = _checked_claim(at_least, at_most)
