@@ -54,6 +54,16 @@ class Estimate:
     reason: str = ""
     notes: tuple[str, ...] = ()
 
+    @property
+    def lower(self) -> float:
+        """The lower end alone: a one-sided limit that holds at least as often as the interval does."""
+        return self.interval[0]
+
+    @property
+    def upper(self) -> float:
+        """The upper end alone: a one-sided limit that holds at least as often as the interval does."""
+        return self.interval[1]
+
     def __str__(self) -> str:
         unit = "" if self.unit == "1" else f" {self.unit}"
         low, high = (f"{end:.4g}" for end in self.interval)

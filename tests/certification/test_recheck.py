@@ -99,9 +99,8 @@ def test_changing_any_number_is_refused(functional, options, factor):
         place = changed
         for key in path[:-1]:
             place = place[key]
-        place[path[-1]] = type(place[path[-1]])(
-            place[path[-1]] * factor + (factor > 1) * isinstance(place[path[-1]], int)
-        )
+        before = place[path[-1]]
+        place[path[-1]] = before + (1 if factor > 1 else -1) if isinstance(before, int) else before * factor
         with pytest.raises((RecheckError, ArgumentValueError)):
             recheck(Certificate.from_json(json.dumps(changed)), RECORD)
 

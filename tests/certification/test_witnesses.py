@@ -8,7 +8,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from entropest._mp import context
+from entropest._mp import context, interval_context
 from entropest.certification.plain import cycle_values, exact_chord, exact_interpolant, partitions
 from entropest.certification.witnesses import chord, interpolant, ladder_nodes, witness_ladder, witness_values
 from entropest.diagrams import YoungDiagram, cycle_character
@@ -28,6 +28,29 @@ def test_interpolants_stay_below_minus_log(order):
             point = ctx.mpf(float(x))
             value = sum(c * point**j for j, c in enumerate(coefficients))
             assert value <= -ctx.log(point) + ctx.mpf(10) ** -35
+
+
+@pytest.mark.parametrize("order", [3, 4, 5, 6])
+def test_remainder_is_positive_in_interval_arithmetic_away_from_the_nodes(order):
+    """-log x - q(x) > 0 is proved cell by cell on [0.02, 1], outside 0.01 around the nodes and around 1."""
+    ctx, exact = interval_context(40), context(40)
+    nodes = ladder_nodes(order)[7]
+    coefficients = exact_interpolant(nodes, order, exact)
+    bounds = [ctx.mpf([str(c - exact.mpf(10) ** -35), str(c + exact.mpf(10) ** -35)]) for c in coefficients]
+
+    def proved(low: float, high: float) -> bool:
+        cell, middle = ctx.mpf([low, high]), ctx.mpf((low + high) / 2)
+        value = -ctx.log(middle) - sum(c * middle**j for j, c in enumerate(bounds))
+        slope = -1 / cell - sum(j * c * cell ** (j - 1) for j, c in enumerate(bounds) if j)
+        return bool((value + slope * (cell - middle)).a > 0)
+
+    pending = [(0.02 + 0.02 * i, 0.04 + 0.02 * i) for i in range(49)]
+    while pending:
+        low, high = pending.pop()
+        if any(node - 0.01 <= low and high <= node + 0.01 for node in (*nodes, 1.0)) or proved(low, high):
+            continue
+        assert high - low > 1e-6
+        pending += [(low, (low + high) / 2), ((low + high) / 2, high)]
 
 
 def test_divided_differences_agree_with_the_linear_system():
