@@ -5,7 +5,12 @@ from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
+import hypothesis
 import pytest
+
+# The gate must give one verdict: the same examples every time, and no limit on the time of an example.
+hypothesis.settings.register_profile("entropest", deadline=None, derandomize=True)
+hypothesis.settings.load_profile("entropest")
 
 REFERENCE = Path(__file__).parent / "reference"
 
